@@ -1,0 +1,167 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The estimate at one damping with everything that goes with it. */
+#include "command/selection.h"
+#include "command/work.h"
+
+#include "core/decimal.h"
+#include "core/memory.h"
+#include "solve/bounds.h"
+#include "solve/robust.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+static lw_status keep(lw_work *work, lw_status status)
+{
+    if (status > 0 && (work->qualified == LW_OK || status == LW_INTERRUPTED)) work->qualified = status;
+    return status > 0 ? LW_OK : status;
+}
+
+static lw_status search_outliers(lw_work *work, lw_error *error)
+{
+    lw_system_options system = {.penalty = work->arguments->penalty};
+    lw_status status = lw_outlier_search(work->problem, &system, &work->arguments->solve, &work->arguments->certainty, 0,
+                                         &work->watch, &work->outliers, error);
+    if (status < 0) return status;
+    int64_t rows = work->system->rows;
+    work->row_factor = LW_NEW_ARRAY(double, rows);
+    if (!work->row_factor) return lw_fail_memory(error, "weights", (size_t)rows * sizeof(double));
+    memcpy(work->row_factor, work->outliers->row_factor, (size_t)rows * sizeof(double));
+    return keep(work, lw_work_system(work, error));
+}
+
+static const char *misfit_name(lw_misfit_kind misfit)
+{
+    return misfit == LW_MISFIT_HUBER ? "huber" : "l1";
+}
+
+/* The robust estimate, its weights, and the system of which it is the least squares solution. */
+static lw_status reweight(lw_work *work, double lambda, lw_error *error)
+{
+    lw_robust_options options = {.misfit = work->arguments->misfit, .scale_stated = work->problem->sigma != NULL};
+    lw_system_options system = {.penalty = work->arguments->penalty, .row_factor = work->row_factor};
+    lw_robust *robust = NULL;
+    lw_status status = keep(work, lw_robust_solve(work->problem, &system, lambda, &work->arguments->solve, &options, &work->watch,
+                                                  &robust, error));
+    if (status != LW_OK) return status;
+    work->estimate = robust->estimate;
+    work->weight = robust->weight;
+    lw_free(work->row_factor);
+    work->row_factor = robust->row_factor;
+    robust->estimate = NULL;
+    robust->weight = robust->row_factor = NULL;
+    lw_log_add(&work->log, "The misfit is %s (%s, %lld iterations, scale %.6g): chi-square and the standard deviations count the "
+               "readings with their final weights.", misfit_name(options.misfit), robust->way, (long long)robust->iterations, robust->scale);
+    lw_robust_free(robust);
+    return lw_work_system(work, error);
+}
+
+static bool has_bounds(const lw_problem *problem)
+{
+    for (int64_t j = 0; j < problem->n; j++)
+        if ((problem->lower && problem->lower[j] > -HUGE_VAL) || (problem->upper && problem->upper[j] < HUGE_VAL)) return true;
+    return false;
+}
+
+/* The bounded estimate, in place of a plain one. */
+static lw_status bound(lw_work *work, double lambda, lw_error *error)
+{
+    lw_bounds_options options = {.storage = work->arguments->solve.storage, .steps = work->arguments->solve.steps};
+    lw_bounded *bounded = NULL;
+    lw_status status = keep(work, lw_bounds_solve(work->system, lambda, &options, &work->watch, &bounded, error));
+    if (status != LW_OK) return status;
+    int64_t n = work->problem->n;
+    work->at_bound = LW_NEW_ZEROS(int8_t, n + 1);
+    work->bound_multiplier = LW_NEW_ZEROS(double, n + 1);
+    if (!work->at_bound || !work->bound_multiplier) status = lw_fail_memory(error, "bounds", (size_t)n * 9);
+    if (status == LW_OK)
+        status = lw_estimate_from_model(work->system, lambda, bounded->z, bounded->z_low, bounded->z_low != NULL, &work->estimate, error);
+    for (int64_t k = 0; k < work->system->columns && status == LW_OK; k++) {
+        int64_t j = work->system->parameter_of[k];
+        work->at_bound[j] = bounded->at_bound[k];
+        work->bound_multiplier[j] = bounded->multiplier[k];
+    }
+    if (status == LW_OK) {
+        work->estimate->steps = bounded->steps;
+        work->estimate->stop = bounded->stop;
+        snprintf(work->engine.why, sizeof work->engine.why, "bounds: gradient projection%s", bounded->exchanges ? " and an active-set finish" : "");
+        lw_log_add(&work->log, "%lld of %lld parameters stand at a bound; the optimality conditions hold to %.1e (relative). No standard "
+                   "deviations are given for a bounded estimate.", (long long)(work->system->columns - bounded->free),
+                   (long long)work->system->columns, bounded->optimality);
+    }
+    lw_bounded_free(bounded);
+    return status;
+}
+
+static lw_status plain(lw_work *work, double lambda, lw_error *error)
+{
+    lw_status status = LW_OK;
+    if (!work->decomposition) status = lw_work_decompose(work, lambda, false, error);
+    if (status >= 0) status = keep(work, status);
+    if (status == LW_OK)
+        status = keep(work, work->decomposition->methods->estimate(work->decomposition, lambda, &work->watch, &work->estimate, error));
+    if (work->qualified == LW_NOT_CONVERGED && work->estimate)
+        lw_log_add(&work->log, "Not converged: %s.", lw_stop_words(work->estimate->stop));
+    return status;
+}
+
+static lw_status certainty(lw_work *work, double lambda, lw_error *error)
+{
+    lw_certainty_options *options = &work->arguments->certainty;
+    const lw_engine *engine = lw_engine_find(work->decomposition->methods->engine);
+    work->run.effective_parameters = work->estimate->point.effective_parameters;
+    if (lambda > 0.0 && isnan(work->run.effective_parameters) && engine && (engine->abilities & LW_DIRECT)) {
+        lw_point point;
+        lw_status status = work->decomposition->methods->evaluate(work->decomposition, 1, &lambda, 1, &point, NULL, &work->watch, error);
+        if (status < 0) return status;
+        work->estimate->point.effective_parameters = work->run.effective_parameters = point.effective_parameters;
+        work->estimate->point.effective_spread = point.effective_spread;
+    }
+    if (lambda == 0.0 && work->estimate->rank >= 0) work->run.effective_parameters = (double)work->estimate->rank;
+    options->sigma = !work->arguments->no_sigma;
+    options->components = work->arguments->variance_components;
+    lw_status status = lw_select_parameters(work, error);
+    if (status != LW_OK) return status;
+    return keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));
+}
+
+lw_status lw_work_estimate(lw_work *work, double lambda, const char *chosen_by, lw_error *error)
+{
+    lw_status status = LW_OK;
+    work->run.damping = lambda;
+    work->run.damping_chosen_by = chosen_by;
+    work->run.effective_parameters = LW_UNKNOWN;
+    bool bounded = has_bounds(work->problem), robust = work->arguments->misfit != LW_MISFIT_SQUARES;
+    if (bounded && robust)
+        return lw_fail(error, LW_BAD_USAGE, "--misfit %s does not go together with bounds: remove one of them",
+                       misfit_name(work->arguments->misfit));
+    if (work->arguments->search_outliers) {
+        if (lambda > 0.0)
+            return lw_fail(error, LW_BAD_USAGE, "--search-outliers does not go together with --damping: the test statistics hold for "
+                           "undamped problems (state what is known as prior_sigma instead)");
+        status = search_outliers(work, error);
+    }
+    if (status == LW_OK && robust) status = reweight(work, lambda, error);
+    else if (status == LW_OK && bounded) status = bound(work, lambda, error);
+    else if (status == LW_OK) status = plain(work, lambda, error);
+    work->run.seconds.solve += lw_work_lap(work);
+    work->run.interrupted = work->qualified == LW_INTERRUPTED;
+    bool certain = !bounded && work->arguments->misfit != LW_MISFIT_L1; /* an l1 estimate meets some readings and uses no redundancy */
+    if (work->arguments->misfit == LW_MISFIT_L1) lw_log_add(&work->log, "No standard deviations are given for an l1 estimate.");
+    if (status == LW_OK && certain && !work->run.interrupted) {
+        if (!work->decomposition) status = keep(work, lw_work_decompose(work, lambda, false, error));
+        if (status == LW_OK) status = certainty(work, lambda, error);
+    }
+    work->run.seconds.certainty = lw_work_lap(work);
+    work->run.estimate = work->estimate;
+    work->run.certainty = work->certainty;
+    work->run.outliers = work->outliers;
+    work->run.weight = work->weight;
+    work->run.at_bound = work->at_bound;
+    work->run.bound_multiplier = work->bound_multiplier;
+    if (status == LW_OK && work->certainty && work->certainty->test.applies && work->certainty->test.rejected &&
+        work->arguments->fail_on_reject && work->qualified == LW_OK)
+        work->qualified = LW_QUALIFIED;
+    return status;
+}
