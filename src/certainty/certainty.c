@@ -19,10 +19,11 @@ const char *lw_sigma_kind_name(lw_sigma_kind kind)
 void lw_certainty_free(lw_certainty *c)
 {
     if (!c) return;
-    void *arrays[] = {c->sigma,        c->sigma_kind,      c->interval_low,  c->interval_high,  c->resolution,
-                      c->predicted_sigma, c->redundancy,   c->standardized,  c->detectable,     c->bias_ratio,
-                      c->error_estimate, c->largest_shift, c->shifted_parameter, c->flag,       c->inseparable,
-                      c->groups,       c->covariance,      c->ellipses,      c->resolution_rows};
+    void *arrays[] = {
+        c->sigma,           c->sigma_kind,    c->interval_low,      c->interval_high,  c->resolution,
+        c->predicted_sigma, c->redundancy,    c->standardized,      c->detectable,     c->bias_ratio,
+        c->error_estimate,  c->largest_shift, c->shifted_parameter, c->flag,           c->inseparable,
+        c->groups,          c->covariance,    c->ellipses,          c->resolution_rows};
     for (size_t k = 0; k < sizeof arrays / sizeof *arrays; k++) lw_free(arrays[k]);
     lw_free(c);
 }
@@ -60,11 +61,15 @@ static lw_status make_resolution(lw_certainty_work *w, lw_error *error)
     bool entries = w->cofactor->kind != LW_COFACTOR_NONE || !w->damped;
     double trace = (double)NAN, *diagonal = LW_NEW_ARRAY(double, n);
     out->resolution = unknown(out->parameters);
-    lw_status status = diagonal && out->resolution ? LW_OK : lw_fail_memory(error, "the resolution", (size_t)n * 16);
-    if (status == LW_OK && entries) status = lw_resolution_of_entries(w->cofactor, w->watch, diagonal, &trace, error);
+    lw_status status =
+        diagonal && out->resolution ? LW_OK : lw_fail_memory(error, "the resolution", (size_t)n * 16);
+    if (status == LW_OK && entries)
+        status = lw_resolution_of_entries(w->cofactor, w->watch, diagonal, &trace, error);
     if (status == LW_OK && !entries)
-        status = lw_resolution_by_probes(w->cofactor, w->watch, diagonal, &trace, &out->resolution_error, error);
-    for (int64_t j = 0; j < n && status == LW_OK; j++) out->resolution[w->system->parameter_of[j]] = diagonal[j];
+        status =
+            lw_resolution_by_probes(w->cofactor, w->watch, diagonal, &trace, &out->resolution_error, error);
+    for (int64_t j = 0; j < n && status == LW_OK; j++)
+        out->resolution[w->system->parameter_of[j]] = diagonal[j];
     out->effective_parameters = trace;
     lw_free(diagonal);
     return status;
@@ -77,9 +82,11 @@ static lw_status make_resolution_rows(lw_certainty_work *w, lw_error *error)
     lw_status status = lw_watch_budget(w->watch, lw_bytes(lw_bytes(count, n), 8), "rows of the resolution",
                                        "ask for fewer parameters", error);
     if (status != LW_OK) return status;
-    w->out->resolution_rows = LW_NEW_ARRAY(double, count * n);
-    if (!w->out->resolution_rows) return lw_fail_memory(error, "rows of the resolution", (size_t)(count * n) * 8);
-    return lw_resolution_rows(w->cofactor, count, w->options->resolution_of, w->watch, w->out->resolution_rows, error);
+    w->out->resolution_rows = LW_NEW_ARRAY(double, count *n);
+    if (!w->out->resolution_rows)
+        return lw_fail_memory(error, "rows of the resolution", (size_t)(count * n) * 8);
+    return lw_resolution_rows(w->cofactor, count, w->options->resolution_of, w->watch,
+                              w->out->resolution_rows, error);
 }
 
 /* All that needs columns of Q, the inversion, all that needs entries. */
@@ -98,14 +105,16 @@ static lw_status read_inverse(lw_certainty_work *w, bool last, lw_error *error)
     return status;
 }
 
-/* Rank: of the estimate; of our own factor (which exists only where it is full). Effective parameters: of the estimate,
- * else the trace of the resolution. */
+/* Rank: of the estimate; of our own factor (which exists only where it is full). Effective parameters: of the
+ * estimate, else the trace of the resolution. */
 static void make_test(lw_certainty_work *w)
 {
     const lw_point *point = &w->estimate->point;
-    double effective = isnan(point->effective_parameters) ? w->out->effective_parameters : point->effective_parameters;
+    double effective =
+        isnan(point->effective_parameters) ? w->out->effective_parameters : point->effective_parameters;
     int64_t rank = w->estimate->rank;
-    if (rank < 0 && w->cofactor->own_factor && w->cofactor->kind != LW_COFACTOR_NONE) rank = w->cofactor->columns;
+    if (rank < 0 && w->cofactor->own_factor && w->cofactor->kind != LW_COFACTOR_NONE)
+        rank = w->cofactor->columns;
     lw_global_test_make(w->system, point, rank, effective, w->options->confidence, &w->out->test);
 }
 
@@ -119,7 +128,8 @@ static void take_factor(lw_certainty_work *w)
     w->factor = w->options->variance_estimated ? out->test.variance_factor : 1;
     out->multiplied = w->options->variance_estimated;
     double p = (1 + w->options->confidence) / 2;
-    out->interval_multiplier = out->multiplied ? (dof > 0 ? lw_t_quantile(p, dof) : (double)NAN) : lw_normal_quantile(p);
+    out->interval_multiplier =
+        out->multiplied ? (dof > 0 ? lw_t_quantile(p, dof) : (double)NAN) : lw_normal_quantile(p);
     out->delta0 = lw_noncentrality(w->options->alpha, w->options->power);
 }
 
@@ -134,10 +144,12 @@ static lw_status finish(lw_certainty_work *w, lw_error *error)
     return status;
 }
 
-lw_status lw_certainty_make(lw_decomposition *decomposition, const lw_estimate *estimate, const lw_certainty_options *options,
-                            bool last, const lw_watch *watch, lw_certainty **out, lw_error *error)
+lw_status lw_certainty_make(lw_decomposition *decomposition, const lw_estimate *estimate,
+                            const lw_certainty_options *options, bool last, const lw_watch *watch,
+                            lw_certainty **out, lw_error *error)
 {
-    lw_certainty_work w = {.system = decomposition->system, .estimate = estimate, .options = options, .watch = watch};
+    lw_certainty_work w = {
+        .system = decomposition->system, .estimate = estimate, .options = options, .watch = watch};
     *out = NULL;
     w.damped = estimate->point.lambda > 0;
     w.noise = w.damped && options->meaning == LW_MEANS_NOISE;

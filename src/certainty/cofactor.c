@@ -10,7 +10,8 @@
 #include <string.h>
 
 /* N = A'A + lambda^2 L'L, upper triangle. */
-static lw_status normal_matrix(lw_system *system, double lambda, const lw_watch *watch, lw_sparse **out, lw_error *error)
+static lw_status normal_matrix(lw_system *system, double lambda, const lw_watch *watch, lw_sparse **out,
+                               lw_error *error)
 {
     lw_sparse *gram = NULL, *penalty = NULL;
     *out = NULL;
@@ -36,10 +37,12 @@ static lw_status factor_own(lw_cofactor *c, const lw_watch *watch, lw_error *err
     lw_cholesky_size size = {0};
     int64_t defect = -1;
     lw_error quiet = {0};
-    if (c->columns == 0 || c->columns > LW_COFACTOR_MOST || system->conditions > 0 || c->defect > 0) return LW_OK;
+    if (c->columns == 0 || c->columns > LW_COFACTOR_MOST || system->conditions > 0 || c->defect > 0)
+        return LW_OK;
     lw_status status = normal_matrix(system, c->lambda, watch, &normal, error);
     if (status == LW_OK) status = lw_cholesky_analyse(normal, watch, &c->own_factor, &size, error);
-    if (status == LW_OK && lw_watch_budget(watch, lw_bytes(2, size.bytes), "standard deviations", "", &quiet) == LW_OK) {
+    if (status == LW_OK &&
+        lw_watch_budget(watch, lw_bytes(2, size.bytes), "standard deviations", "", &quiet) == LW_OK) {
         status = lw_cholesky_factorize(c->own_factor, normal, watch, &defect, &quiet);
         if (status == LW_OK) status = lw_cholesky_view(c->own_factor, &c->source.view, error);
         if (status == LW_OK) {
@@ -61,7 +64,8 @@ static void count_factor(lw_cofactor *c)
     if (c->kind != LW_COFACTOR_SELECTED) return;
     c->factor_nonzeros = 0;
     for (int64_t s = 0; s < v->supernodes; s++)
-        c->factor_nonzeros += (double)(v->first[s + 1] - v->first[s]) * (double)(v->row_start[s + 1] - v->row_start[s]);
+        c->factor_nonzeros +=
+            (double)(v->first[s + 1] - v->first[s]) * (double)(v->row_start[s + 1] - v->row_start[s]);
 }
 
 lw_status lw_cofactor_none(lw_decomposition *decomposition, double lambda, lw_cofactor **out, lw_error *error)
@@ -78,8 +82,8 @@ lw_status lw_cofactor_none(lw_decomposition *decomposition, double lambda, lw_co
     return LW_OK;
 }
 
-lw_status lw_cofactor_new(lw_decomposition *decomposition, double lambda, const lw_watch *watch, lw_cofactor **out,
-                          lw_error *error)
+lw_status lw_cofactor_new(lw_decomposition *decomposition, double lambda, const lw_watch *watch,
+                          lw_cofactor **out, lw_error *error)
 {
     const lw_decomposition_methods *methods = decomposition->methods;
     lw_status status = lw_cofactor_none(decomposition, lambda, out, error);
@@ -137,8 +141,9 @@ lw_status lw_cofactor_apply(lw_cofactor *c, int64_t k, double *g, lw_error *erro
     const lw_inverse_source *s = &c->source;
     int64_t n = c->columns, d = s->correction;
     if (c->kind != LW_COFACTOR_DENSE) return apply_by_solving(c, k, g, error);
-    double *copy = LW_NEW_ARRAY(double, n * k), *part = LW_NEW_ARRAY(double, d * k);
-    lw_status status = copy && part ? LW_OK : lw_fail_memory(error, "columns of the covariance", (size_t)(n * k) * 8);
+    double *copy = LW_NEW_ARRAY(double, n *k), *part = LW_NEW_ARRAY(double, d *k);
+    lw_status status =
+        copy && part ? LW_OK : lw_fail_memory(error, "columns of the covariance", (size_t)(n * k) * 8);
     if (status == LW_OK) {
         memcpy(copy, g, (size_t)(n * k) * sizeof *g);
         lw_dense_multiply(0, 0, n, k, n, 1, s->dense, n, copy, n, 0, g, n);
@@ -159,19 +164,25 @@ lw_status lw_cofactor_columns(lw_cofactor *c, int64_t k, const int64_t *column, 
     return lw_cofactor_apply(c, k, q, error);
 }
 
-lw_status lw_cofactor_project(lw_cofactor *c, int64_t k, const double *f, double *r, double *z, lw_error *error)
+lw_status lw_cofactor_project(lw_cofactor *c, int64_t k, const double *f, double *r, double *z,
+                              lw_error *error)
 {
     const lw_decomposition_methods *m = c->decomposition->methods;
     const lw_system *system = c->decomposition->system;
-    if (c->consumed && !c->own_factor) return lw_fail(error, LW_BAD_SHAPE, "a solution from an overwritten factor was asked for");
+    if (c->consumed && !c->own_factor)
+        return lw_fail(error, LW_BAD_SHAPE, "a solution from an overwritten factor was asked for");
     if (!(c->lambda > 0)) return m->solve_many(c->decomposition, 0, k, f, NULL, NULL, r, z, NULL, error);
     int64_t rows = system->rows, tall = rows + system->penalty_rows;
-    double *wide = LW_NEW_ZEROS(double, tall * k), *side = LW_NEW_ARRAY(double, r ? tall * k : 0);
-    lw_status status = wide && side ? LW_OK : lw_fail_memory(error, "the projections", (size_t)(tall * k) * sizeof *wide);
-    for (int64_t l = 0; l < k && status == LW_OK; l++) memcpy(wide + l * tall, f + l * rows, (size_t)rows * sizeof *f);
+    double *wide = LW_NEW_ZEROS(double, tall *k), *side = LW_NEW_ARRAY(double, r ? tall *k : 0);
+    lw_status status =
+        wide && side ? LW_OK : lw_fail_memory(error, "the projections", (size_t)(tall * k) * sizeof *wide);
+    for (int64_t l = 0; l < k && status == LW_OK; l++)
+        memcpy(wide + l * tall, f + l * rows, (size_t)rows * sizeof *f);
     if (status == LW_OK)
-        status = m->solve_many(c->decomposition, c->lambda, k, wide, NULL, NULL, r ? side : NULL, z, NULL, error);
-    for (int64_t l = 0; l < k && r && status >= LW_OK; l++) memcpy(r + l * rows, side + l * tall, (size_t)rows * sizeof *r);
+        status =
+            m->solve_many(c->decomposition, c->lambda, k, wide, NULL, NULL, r ? side : NULL, z, NULL, error);
+    for (int64_t l = 0; l < k && r && status >= LW_OK; l++)
+        memcpy(r + l * rows, side + l * tall, (size_t)rows * sizeof *r);
     lw_free(wide);
     lw_free(side);
     return status;
@@ -183,8 +194,10 @@ lw_status lw_cofactor_invert(lw_cofactor *c, bool last, const lw_watch *watch, l
     bool in_place = last || c->own_factor;
     lw_status status = LW_OK;
     if (last && !c->own_factor)
-        status = c->decomposition->methods->inverse_entries(c->decomposition, c->lambda, 1, &c->source, error);
-    if (status == LW_OK) status = lw_selected_inverse_run(c->selected, &c->source.view, in_place, watch, error);
+        status =
+            c->decomposition->methods->inverse_entries(c->decomposition, c->lambda, 1, &c->source, error);
+    if (status == LW_OK)
+        status = lw_selected_inverse_run(c->selected, &c->source.view, in_place, watch, error);
     c->consumed = in_place;
     c->inverted = status == LW_OK;
     return status;
@@ -206,7 +219,8 @@ lw_status lw_cofactor_learn(lw_cofactor *c, int64_t count, lw_learned *list, lw_
 {
     double *q = LW_NEW_ARRAY(double, c->columns);
     c->learned = LW_NEW_ARRAY(lw_learned, count);
-    lw_status status = q && c->learned ? LW_OK : lw_fail_memory(error, "covariances", (size_t)count * sizeof *list);
+    lw_status status =
+        q && c->learned ? LW_OK : lw_fail_memory(error, "covariances", (size_t)count * sizeof *list);
     if (status == LW_OK) qsort(list, (size_t)count, sizeof *list, by_place);
     for (int64_t k = 0; k < count && status >= LW_OK; k++) {
         if (k == 0 || list[k].i != list[k - 1].i) status = lw_cofactor_columns(c, 1, &list[k].i, q, error);
@@ -240,6 +254,7 @@ double lw_cofactor_entry(const lw_cofactor *c, int64_t i, int64_t j)
     else if (c->inverted)
         q = lw_selected_inverse_entry(c->selected, i, j);
     if (isnan(q)) return recall(c, i, j);
-    for (int64_t k = 0; k < s->correction; k++) q += s->left[i + k * s->columns] * s->right[j + k * s->columns];
+    for (int64_t k = 0; k < s->correction; k++)
+        q += s->left[i + k * s->columns] * s->right[j + k * s->columns];
     return q;
 }

@@ -11,8 +11,8 @@
 #define LEFT 1e-6
 #define INSEPARABLE 1e-9
 
-lw_status lw_deflation_new(lw_decomposition *decomposition, const lw_estimate *estimate, const lw_certainty *certainty,
-                           lw_deflation **out, lw_error *error)
+lw_status lw_deflation_new(lw_decomposition *decomposition, const lw_estimate *estimate,
+                           const lw_certainty *certainty, lw_deflation **out, lw_error *error)
 {
     int64_t rows = estimate->rows;
     lw_deflation *d = *out = LW_NEW(lw_deflation);
@@ -68,7 +68,8 @@ static lw_status full_column(lw_deflation *d, int64_t i, double *column, lw_erro
     if (status == LW_OK) {
         f[i] = 1;
         lw_system_whiten(system, 1, f);
-        status = d->decomposition->methods->solve_many(d->decomposition, 0, 1, f, NULL, NULL, column, z, NULL, error);
+        status = d->decomposition->methods->solve_many(d->decomposition, 0, 1, f, NULL, NULL, column, z, NULL,
+                                                       error);
     }
     if (status >= LW_OK) {
         lw_system_whiten_transposed(system, 1, column);
@@ -129,7 +130,8 @@ static lw_status prepare(lw_deflation *d, int64_t i, lw_error *error)
     if (!d->column[k]) d->column[k] = LW_NEW_ARRAY(double, d->rows);
     if (!d->full[k]) d->full[k] = LW_NEW_ARRAY(double, d->rows);
     d->row[k] = -1;
-    if (!d->column[k] || !d->full[k]) return lw_fail_memory(error, "the outlier search", (size_t)d->rows * 16);
+    if (!d->column[k] || !d->full[k])
+        return lw_fail_memory(error, "the outlier search", (size_t)d->rows * 16);
     status = full_column(d, i, d->full[k], error);
     if (status != LW_OK) return status;
     reduce(d, k, i, d->full[k], d->column[k]);
@@ -181,7 +183,7 @@ void lw_deflation_remove(lw_deflation *d, int64_t k)
 lw_status lw_deflation_back(const lw_deflation *d, double *w, lw_error *error)
 {
     int64_t k = d->count, defect = 0;
-    double *G = LW_NEW_ARRAY(double, k * k);
+    double *G = LW_NEW_ARRAY(double, k *k);
     if (!G) return lw_fail_memory(error, "the outlier search", (size_t)(k * k) * sizeof *G);
     for (int64_t b = 0; b < k; b++)
         for (int64_t a = 0; a < k; a++) G[a + b * k] = d->full[b][d->row[a]];

@@ -1,11 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Error ellipses: axes are square roots of the eigenvalues of the covariance of a point (or of a difference of points);
- * in the plane
+/* Error ellipses: axes are square roots of the eigenvalues of the covariance of a point (or of a difference
+ * of points); in the plane
  *
  *     a^2, b^2 = (xx + yy +- sqrt((yy - xx)^2 + 4 xy^2)) / 2,   tan 2t = 2 xy / (yy - xx)
  *
- * with t clockwise from the second axis (north). Source: JCGM 102:2011; Mikhail & Gracie, Analysis and Adjustment of Survey
- * Measurements, 1981. */
+ * with t clockwise from the second axis (north). Source: JCGM 102:2011; Mikhail & Gracie, Analysis and
+ * Adjustment of Survey Measurements, 1981. */
 #include "certainty/part.h"
 #include "certainty/point_list.h"
 #include "core/chance.h"
@@ -37,27 +37,33 @@ static double covariance(const lw_certainty_work *w, int64_t i, int64_t j)
 }
 
 /* Covariance of a point (to < 0) or of the difference of two, 3 x 3. */
-static void point_covariance(const lw_certainty_work *w, const lw_point_list *p, int64_t from, int64_t to, double C[9])
+static void point_covariance(const lw_certainty_work *w, const lw_point_list *p, int64_t from, int64_t to,
+                             double C[9])
 {
     const int64_t *f = p->column + 3 * from, *t = to < 0 ? NULL : p->column + 3 * to;
     for (int i = 0; i < 3; i++) {
         for (int j = 0; j < 3; j++) {
             C[i + 3 * j] = covariance(w, f[i], f[j]);
             if (t)
-                C[i + 3 * j] += covariance(w, t[i], t[j]) - covariance(w, f[i], t[j]) - covariance(w, t[i], f[j]);
+                C[i + 3 * j] +=
+                    covariance(w, t[i], t[j]) - covariance(w, f[i], t[j]) - covariance(w, t[i], f[j]);
         }
     }
 }
 
-static lw_status fill_ellipse(const lw_certainty_work *w, const lw_point_list *p, int64_t from, int64_t to, lw_ellipse *out,
-                              lw_error *error)
+static lw_status fill_ellipse(const lw_certainty_work *w, const lw_point_list *p, int64_t from, int64_t to,
+                              lw_ellipse *out, lw_error *error)
 {
     int dimension = lw_point_dimension(p, from), other = to < 0 ? dimension : lw_point_dimension(p, to);
     double C[9], values[3] = {(double)NAN, (double)NAN, (double)NAN};
     lw_status status = LW_OK;
     if (other < dimension) dimension = other;
     point_covariance(w, p, from, to, C);
-    lw_ellipse e = {.point = (int32_t)from, .to_point = (int32_t)to, .dimension = dimension, .confidence = (double)NAN, .multiplier = 1};
+    lw_ellipse e = {.point = (int32_t)from,
+                    .to_point = (int32_t)to,
+                    .dimension = dimension,
+                    .confidence = (double)NAN,
+                    .multiplier = 1};
     lw_ellipse_axes(C[0], C[3], C[4], &e.semi_major, &e.semi_minor, &e.azimuth);
     e.vertical = dimension == 3 ? sqrt(fmax(0, C[8])) : (double)NAN;
     bool known = !isnan(C[0] + C[3] + C[4] + (dimension == 3 ? C[6] + C[7] + C[8] : 0));
@@ -92,7 +98,8 @@ static void all_needs(const lw_point_list *p, need *call, void *state)
 {
     for (int64_t k = 0; k < p->points; k++)
         if (lw_point_is_free(p, k)) needs_of(p, k, k, call, state);
-    for (int64_t k = 0; k < p->pairs; k++) needs_of(p, p->pair[k] / p->points, p->pair[k] % p->points, call, state);
+    for (int64_t k = 0; k < p->pairs; k++)
+        needs_of(p, p->pair[k] / p->points, p->pair[k] % p->points, call, state);
 }
 
 typedef struct lacking {
@@ -135,7 +142,8 @@ lw_status lw_ellipses_make(lw_certainty_work *w, lw_error *error)
     if (!p || isnan(w->factor)) return LW_OK;
     for (int64_t k = 0; k < p->points; k++) absolute += lw_point_is_free(p, k);
     out->ellipses = LW_NEW_ARRAY(lw_ellipse, 2 * (absolute + p->pairs));
-    if (!out->ellipses) return lw_fail_memory(error, "ellipses", (size_t)(absolute + p->pairs) * 2 * sizeof(lw_ellipse));
+    if (!out->ellipses)
+        return lw_fail_memory(error, "ellipses", (size_t)(absolute + p->pairs) * 2 * sizeof(lw_ellipse));
     lw_ellipse *e = out->ellipses;
     for (int64_t k = 0; k < p->points && status == LW_OK; k++) {
         if (!lw_point_is_free(p, k)) continue;

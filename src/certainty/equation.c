@@ -59,16 +59,18 @@ int64_t lw_equation_block(const lw_equations *equations, int64_t i)
     return c && i < equations->system->observations ? c->block_of[i] : -1;
 }
 
-lw_status lw_equation_weights(const lw_equations *equations, int64_t block, int64_t *size, int64_t **member, double **weights,
-                              lw_error *error)
+lw_status lw_equation_weights(const lw_equations *equations, int64_t block, int64_t *size, int64_t **member,
+                              double **weights, lw_error *error)
 {
     const lw_covariance *c = equations->system->problem->covariance;
     int64_t all = c->start[block + 1] - c->start[block], used = 0, defect = 0;
     const int32_t *of = c->member + c->start[block];
     const double *covariance = c->value + c->value_start[block];
     int64_t *list = LW_NEW_ARRAY(int64_t, all), *at = LW_NEW_ARRAY(int64_t, all);
-    double *P = LW_NEW_ARRAY(double, all * all);
-    lw_status status = list && at && P ? LW_OK : lw_fail_memory(error, "weights of a block", (size_t)(all * all) * sizeof *P);
+    double *P = LW_NEW_ARRAY(double, all *all);
+    lw_status status = list && at && P
+                           ? LW_OK
+                           : lw_fail_memory(error, "weights of a block", (size_t)(all * all) * sizeof *P);
     *member = NULL;
     *weights = NULL;
     *size = 0;

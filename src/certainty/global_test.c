@@ -6,8 +6,8 @@
 #include <math.h>
 #include <stdio.h>
 
-void lw_global_test_make(const lw_system *system, const lw_point *point, int64_t rank, double effective, double confidence,
-                         lw_global_test *out)
+void lw_global_test_make(const lw_system *system, const lw_point *point, int64_t rank, double effective,
+                         double confidence, lw_global_test *out)
 {
     const lw_problem *problem = system->problem;
     bool damped = point->lambda > 0, stated = problem->sigma != NULL || problem->covariance != NULL;
@@ -31,14 +31,22 @@ void lw_global_test_make(const lw_system *system, const lw_point *point, int64_t
 void lw_global_test_advice(const lw_global_test *test, char text[400])
 {
     if (!test->applies)
-        snprintf(text, 400, "The global test does not apply: it needs stated standard deviations, redundancy and no damping.");
+        snprintf(text, 400,
+                 "The global test does not apply: it needs stated standard deviations, redundancy and no "
+                 "damping.");
     else if (!test->rejected)
-        snprintf(text, 400, "The readings agree with each other as well as their stated standard deviations let expect.");
+        snprintf(
+            text, 400,
+            "The readings agree with each other as well as their stated standard deviations let expect.");
     else if (test->too_high)
-        snprintf(text, 400, "The readings disagree more than their stated standard deviations allow: look for a gross error "
-                            "(largest standardized residual), for an equation that does not fit the field, or for standard "
-                            "deviations stated too small.");
+        snprintf(
+            text, 400,
+            "The readings disagree more than their stated standard deviations allow: look for a gross error "
+            "(largest standardized residual), for an equation that does not fit the field, or for standard "
+            "deviations stated too small.");
     else
-        snprintf(text, 400, "The readings agree better than their stated standard deviations let expect: the standard "
-                            "deviations are probably stated too large, or the readings are not independent of each other.");
+        snprintf(
+            text, 400,
+            "The readings agree better than their stated standard deviations let expect: the standard "
+            "deviations are probably stated too large, or the readings are not independent of each other.");
 }

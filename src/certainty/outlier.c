@@ -12,8 +12,8 @@ typedef struct search {
     const lw_system *system;
     const lw_certainty_options *options;
     lw_deflation *deflation;
-    bool *hidden;      /* rows: left out of the search, but kept */
-    double dof;        /* of the full problem */
+    bool *hidden; /* rows: left out of the search, but kept */
+    double dof;   /* of the full problem */
     int64_t tested, room;
     lw_outlier_log *log;
 } search;
@@ -33,8 +33,8 @@ static const char *name_of(const search *s, int64_t row)
     return lw_ids_name(problem->parameters, s->system->prior_parameter[row - s->system->observations]);
 }
 
-static lw_status note(search *s, int64_t row, const char *action, double statistic, double critical, const char *reason,
-                      lw_error *error)
+static lw_status note(search *s, int64_t row, const char *action, double statistic, double critical,
+                      const char *reason, lw_error *error)
 {
     lw_outlier_log *log = s->log;
     if (log->count == s->room) {
@@ -45,18 +45,23 @@ static lw_status note(search *s, int64_t row, const char *action, double statist
         s->room = room;
     }
     lw_outlier_step *step = log->steps + log->count;
-    *step = (lw_outlier_step){.step = (int)++log->count, .row = row, .action = action, .statistic = statistic,
+    *step = (lw_outlier_step){.step = (int)++log->count,
+                              .row = row,
+                              .action = action,
+                              .statistic = statistic,
                               .critical = critical};
     snprintf(step->reason, sizeof step->reason, "%s", reason);
     return LW_OK;
 }
 
-/* Critical value of the family with `aside` rows out: of w, or of tau with the degrees of freedom that are left. */
+/* Critical value of the family with `aside` rows out: of w, or of tau with the degrees of freedom that are
+ * left. */
 static double critical_value(const search *s, int64_t aside)
 {
     double tests = (double)(s->tested - aside);
     double alpha = lw_family_alpha(1 - s->options->confidence, tests > 1 ? tests : 1);
-    return s->options->variance_estimated ? lw_tau_critical(alpha, s->dof - (double)aside) : lw_w_critical(alpha);
+    return s->options->variance_estimated ? lw_tau_critical(alpha, s->dof - (double)aside)
+                                          : lw_w_critical(alpha);
 }
 
 /* s0 that statistics are divided by: 1, or that of chi_square with `aside` rows out. */
@@ -91,9 +96,11 @@ static lw_status step_forward(search *s, bool *more, lw_error *error)
     if (status == LW_OK) status = lw_deflation_add(d, row, error);
     if (status != LW_OK) return status;
     if (rival < 0)
-        return note(s, row, "set aside", w / s0, critical, "largest statistic, above the critical value of the family", error);
+        return note(s, row, "set aside", w / s0, critical,
+                    "largest statistic, above the critical value of the family", error);
     s->hidden[row] = true;
-    snprintf(reason, sizeof reason, "an error in it cannot be told from one in '%.100s': look at both", name_of(s, rival));
+    snprintf(reason, sizeof reason, "an error in it cannot be told from one in '%.100s': look at both",
+             name_of(s, rival));
     return note(s, row, "kept", w / s0, critical, reason, error);
 }
 
@@ -102,7 +109,7 @@ static lw_status step_back(search *s, double *w, bool *more, lw_error *error)
 {
     lw_deflation *d = s->deflation;
     int64_t best = -1;
-    double smallest = INFINITY, critical = critical_value(s, d->count - 1);
+    double smallest = HUGE_VAL, critical = critical_value(s, d->count - 1);
     *more = false;
     lw_status status = lw_deflation_back(d, w, error);
     for (int64_t k = 0; k < d->count && status == LW_OK; k++) {
@@ -113,7 +120,8 @@ static lw_status step_back(search *s, double *w, bool *more, lw_error *error)
     }
     if (best < 0) return status;
     double signed_value = copysign(smallest, w[best]);
-    status = note(s, d->row[best], "reinstated", signed_value, critical, "with the others set aside it agrees again", error);
+    status = note(s, d->row[best], "reinstated", signed_value, critical,
+                  "with the others set aside it agrees again", error);
     lw_deflation_remove(d, best);
     *more = true;
     return status;
@@ -141,20 +149,23 @@ static lw_status run(search *s, int64_t most, const lw_watch *watch, lw_error *e
     lw_status status = LW_OK;
     while (more && status == LW_OK && s->deflation->count < most) {
         lw_watch_tick(watch, "searching outliers", (double)s->deflation->count, 0, "");
-        if (lw_watch_cancelled(watch)) return lw_fail(error, LW_INTERRUPTED, "interrupted while searching outliers");
+        if (lw_watch_cancelled(watch))
+            return lw_fail(error, LW_INTERRUPTED, "interrupted while searching outliers");
         status = step_forward(s, &more, error);
     }
     double *w = LW_NEW_ARRAY(double, s->deflation->count);
     if (!w) return lw_fail_memory(error, "the outlier search", (size_t)s->deflation->count * sizeof *w);
-    for (more = true; more && status == LW_OK && s->deflation->count > 0;) status = step_back(s, w, &more, error);
+    for (more = true; more && status == LW_OK && s->deflation->count > 0;)
+        status = step_back(s, w, &more, error);
     if (status == LW_OK && s->deflation->count > 0) status = conclude(s, w, error);
     lw_free(w);
     return status;
 }
 
 /* The full problem: decomposition, estimate and reliability. */
-static lw_status solve_full(lw_system *system, const lw_solve_options *solve_options, const lw_certainty_options *options,
-                            const lw_watch *watch, lw_decomposition **decomposition, lw_estimate **estimate,
+static lw_status solve_full(lw_system *system, const lw_solve_options *solve_options,
+                            const lw_certainty_options *options, const lw_watch *watch,
+                            lw_decomposition **decomposition, lw_estimate **estimate,
                             lw_certainty **certainty, lw_error *error)
 {
     lw_engine_choice choice = {0};
@@ -163,16 +174,20 @@ static lw_status solve_full(lw_system *system, const lw_solve_options *solve_opt
     wanted.reliability = true;
     wanted.covariance_count = wanted.resolution_count = 0;
     lw_status status = lw_decompose(system, 0, solve_options, watch, &choice, decomposition, error);
-    if (status >= LW_OK) status = (*decomposition)->methods->estimate(*decomposition, 0, watch, estimate, error);
+    if (status >= LW_OK)
+        status = (*decomposition)->methods->estimate(*decomposition, 0, watch, estimate, error);
     if (status >= LW_OK)
         status = lw_certainty_make(*decomposition, *estimate, &wanted, false, watch, certainty, error);
     if (status >= LW_OK && !(*certainty)->redundancy)
-        status = lw_fail(error, LW_BAD_USAGE, "the outlier search needs redundancy numbers, which engine %s cannot give here; "
-                                              "use dense or cholesky", (*decomposition)->methods->engine);
+        status = lw_fail(error, LW_BAD_USAGE,
+                         "the outlier search needs redundancy numbers, which engine %s cannot give here; "
+                         "use dense or cholesky",
+                         (*decomposition)->methods->engine);
     return status;
 }
 
-static lw_status search_new(search *s, const lw_system *system, const lw_certainty *certainty, lw_error *error)
+static lw_status search_new(search *s, const lw_system *system, const lw_certainty *certainty,
+                            lw_error *error)
 {
     s->system = system;
     s->dof = certainty->test.degrees_of_freedom;
@@ -188,9 +203,9 @@ static lw_status search_new(search *s, const lw_system *system, const lw_certain
     return LW_OK;
 }
 
-lw_status lw_outlier_search(const lw_problem *problem, const lw_system_options *system_options, const lw_solve_options *solve_options,
-                            const lw_certainty_options *options, int64_t most, const lw_watch *watch, lw_outlier_log **out,
-                            lw_error *error)
+lw_status lw_outlier_search(const lw_problem *problem, const lw_system_options *system_options,
+                            const lw_solve_options *solve_options, const lw_certainty_options *options,
+                            int64_t most, const lw_watch *watch, lw_outlier_log **out, lw_error *error)
 {
     lw_system *system = NULL;
     lw_decomposition *decomposition = NULL;
@@ -200,7 +215,8 @@ lw_status lw_outlier_search(const lw_problem *problem, const lw_system_options *
     *out = NULL;
     lw_status status = lw_system_new(problem, system_options, watch, &system, error);
     if (status == LW_OK)
-        status = solve_full(system, solve_options, options, watch, &decomposition, &estimate, &certainty, error);
+        status =
+            solve_full(system, solve_options, options, watch, &decomposition, &estimate, &certainty, error);
     if (status >= LW_OK) status = search_new(&s, system, certainty, error);
     if (status == LW_OK) status = lw_deflation_new(decomposition, estimate, certainty, &s.deflation, error);
     if (status == LW_OK) {

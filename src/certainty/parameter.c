@@ -16,11 +16,12 @@ static lw_status sample(lw_certainty_work *w, lw_error *error)
     return lw_variance_by_samples(w->cofactor, !w->noise, samples, w->watch, w->variance, error);
 }
 
-/* Cost (columns x nonzeros) of refined variances that a sparse factor may take: about a tenth of a second. The dense engine
- * takes what lw_solve_variances allows. */
+/* Cost (columns x nonzeros) of refined variances that a sparse factor may take: about a tenth of a second.
+ * The dense engine takes what lw_solve_variances allows. */
 #define SPARSE_COST 5e6
 
-/* Variances to twice the digits where the engine refines and the cost is small; else w->refined stays NULL. */
+/* Variances to twice the digits where the engine refines and the cost is small; else w->refined stays NULL.
+ */
 static lw_status refine(lw_certainty_work *w, lw_error *error)
 {
     double worst = 0;
@@ -28,8 +29,8 @@ static lw_status refine(lw_certainty_work *w, lw_error *error)
     w->refined = LW_NEW_ARRAY(lw_decimal, w->cofactor->columns);
     if (!w->refined) return lw_fail_memory(error, "standard deviations", (size_t)w->cofactor->columns * 16);
     double most = w->cofactor->kind == LW_COFACTOR_DENSE ? 0 : SPARSE_COST;
-    lw_status status = lw_solve_variances(w->cofactor->decomposition, w->cofactor->lambda, most, w->watch, w->refined, &worst,
-                                          &quiet);
+    lw_status status = lw_solve_variances(w->cofactor->decomposition, w->cofactor->lambda, most, w->watch,
+                                          w->refined, &worst, &quiet);
     if (status == LW_OK) return LW_OK;
     lw_free(w->refined);
     w->refined = NULL;
@@ -92,7 +93,8 @@ void lw_parameter_finish(lw_certainty_work *w)
             continue;
         }
         if (!usable || isnan(w->variance[c])) continue;
-        out->sigma[j] = w->refined ? refined_sigma(w, c) : sqrt(w->factor * w->variance[c]) * system->scale[c];
+        out->sigma[j] =
+            w->refined ? refined_sigma(w, c) : sqrt(w->factor * w->variance[c]) * system->scale[c];
         out->sigma_kind[j] = (int8_t)w->kind;
         double half = out->interval_multiplier * out->sigma[j];
         out->interval_low[j] = w->estimate->x[j] - half;
@@ -102,7 +104,8 @@ void lw_parameter_finish(lw_certainty_work *w)
 }
 
 /* Column a of the covariance in z: Q e_a, or Q A'A Q e_a for noise. */
-static lw_status covariance_column(lw_certainty_work *w, int64_t column, double *q, double *image, lw_error *error)
+static lw_status covariance_column(lw_certainty_work *w, int64_t column, double *q, double *image,
+                                   lw_error *error)
 {
     lw_status status = lw_cofactor_columns(w->cofactor, 1, &column, q, error);
     if (status < LW_OK || !w->noise) return status < LW_OK ? status : LW_OK;
@@ -128,8 +131,10 @@ static lw_status fill_covariance(lw_certainty_work *w, int64_t count, const int6
 {
     const lw_system *system = w->system;
     lw_covariance_entry *entry = w->out->covariance;
-    double *q = LW_NEW_ARRAY(double, system->columns), *image = LW_NEW_ARRAY(double, w->noise ? system->rows : 0);
-    lw_status status = q && image ? LW_OK : lw_fail_memory(error, "the covariance", (size_t)system->columns * 8);
+    double *q = LW_NEW_ARRAY(double, system->columns),
+           *image = LW_NEW_ARRAY(double, w->noise ? system->rows : 0);
+    lw_status status =
+        q && image ? LW_OK : lw_fail_memory(error, "the covariance", (size_t)system->columns * 8);
     for (int64_t a = 0; a < count && status == LW_OK; a++) {
         int64_t column = system->column_of[list[a]];
         status = covariance_column(w, column, q, image, error);
@@ -138,7 +143,8 @@ static lw_status fill_covariance(lw_certainty_work *w, int64_t count, const int6
             double covariance = q[other] * system->scale[column] * system->scale[other];
             *entry++ = (lw_covariance_entry){list[a], list[b], covariance};
         }
-        if (lw_watch_cancelled(w->watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted during the covariance");
+        if (lw_watch_cancelled(w->watch))
+            status = lw_fail(error, LW_INTERRUPTED, "interrupted during the covariance");
     }
     lw_free(q);
     lw_free(image);
@@ -153,8 +159,8 @@ lw_status lw_parameter_covariance(lw_certainty_work *w, lw_error *error)
     int64_t *list = LW_NEW_ARRAY(int64_t, asked);
     if (!list) return lw_fail_memory(error, "the covariance", (size_t)asked * 8);
     int64_t count = list_parameters(w, list), entries = lw_bytes(count, count + 1) / 2;
-    lw_status status = lw_watch_budget(w->watch, lw_bytes(entries, sizeof(lw_covariance_entry)), "the covariance",
-                                       "ask for fewer parameters", error);
+    lw_status status = lw_watch_budget(w->watch, lw_bytes(entries, sizeof(lw_covariance_entry)),
+                                       "the covariance", "ask for fewer parameters", error);
     if (status == LW_OK && w->noise)
         status = lw_system_matrix(w->cofactor->decomposition->system, w->watch, error);
     if (status == LW_OK) {

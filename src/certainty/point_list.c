@@ -35,9 +35,10 @@ bool lw_point_is_free(const lw_point_list *p, int64_t point)
     return lw_point_dimension(p, point) > 0 && (c[0] >= 0 || c[1] >= 0 || c[2] >= 0);
 }
 
-/* Pairs of points with free coordinates that observation i joins, as from * points + to; returns how many were added. */
-static int64_t joined(const lw_system *system, const lw_sparse *by_row, const lw_point_list *p, int64_t i, int32_t *seen,
-                      int64_t *pairs)
+/* Pairs of points with free coordinates that observation i joins, as from * points + to; returns how many
+ * were added. */
+static int64_t joined(const lw_system *system, const lw_sparse *by_row, const lw_point_list *p, int64_t i,
+                      int32_t *seen, int64_t *pairs)
 {
     const lw_problem *problem = system->problem;
     int64_t points = 0, count = 0;
@@ -64,7 +65,8 @@ static int by_number(const void *a, const void *b)
     return p < q ? -1 : p > q;
 }
 
-static lw_status list_pairs(const lw_system *system, const lw_point_list *p, int64_t **pairs, int64_t *count, lw_error *error)
+static lw_status list_pairs(const lw_system *system, const lw_point_list *p, int64_t **pairs, int64_t *count,
+                            lw_error *error)
 {
     lw_sparse *by_row = NULL;
     lw_status status = lw_sparse_transpose(system->problem->design, &by_row, error);
@@ -72,7 +74,8 @@ static lw_status list_pairs(const lw_system *system, const lw_point_list *p, int
     int32_t *seen = status == LW_OK ? LW_NEW_ARRAY(int32_t, by_row->rows) : NULL;
     for (int64_t i = 0; seen && i < by_row->columns; i++) all += joined(system, by_row, p, i, seen, NULL);
     *pairs = LW_NEW_ARRAY(int64_t, all);
-    if (status == LW_OK && !(seen && *pairs)) status = lw_fail_memory(error, "relative ellipses", (size_t)all * 8);
+    if (status == LW_OK && !(seen && *pairs))
+        status = lw_fail_memory(error, "relative ellipses", (size_t)all * 8);
     for (int64_t i = 0, at = 0; status == LW_OK && i < by_row->columns; i++)
         at += joined(system, by_row, p, i, seen, *pairs + at);
     if (status == LW_OK) qsort(*pairs, (size_t)all, sizeof **pairs, by_number);

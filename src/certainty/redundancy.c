@@ -18,7 +18,8 @@ typedef struct work {
 } work;
 
 /* qa = Q a on the columns of row i, every entry of Q looked up once; returns a' Q a. */
-static double row_products(const lw_cofactor *cofactor, int64_t count, const int64_t *column, const double *a, double *qa)
+static double row_products(const lw_cofactor *cofactor, int64_t count, const int64_t *column, const double *a,
+                           double *qa)
 {
     double form = 0;
     for (int64_t k = 0; k < count; k++) {
@@ -83,8 +84,8 @@ static void fill_part(void *state, int part)
 }
 
 /* C = A_b Q A_b' of the rows of a block. room: the coefficients of all rows, `longest` apart. */
-static void block_cofactors(const work *w, int64_t size, const int64_t *member, int64_t *column, double *a, int64_t *count,
-                            double *C)
+static void block_cofactors(const work *w, int64_t size, const int64_t *member, int64_t *column, double *a,
+                            int64_t *count, double *C)
 {
     int64_t room = w->equations->longest;
     for (int64_t i = 0; i < size; i++)
@@ -102,7 +103,8 @@ static void block_cofactors(const work *w, int64_t size, const int64_t *member, 
 }
 
 /* T = P - P C P and redundancy = 1 - diag(C P). */
-static void fill_members(const work *w, int64_t size, const int64_t *member, const double *P, const double *C, double *CP)
+static void fill_members(const work *w, int64_t size, const int64_t *member, const double *P, const double *C,
+                         double *CP)
 {
     lw_dense_multiply(0, 0, size, size, size, 1, C, size, P, size, 0, CP, size);
     for (int64_t i = 0; i < size; i++) {
@@ -123,8 +125,8 @@ static lw_status fill_block(const work *w, int64_t block, lw_error *error)
     double *P = NULL;
     lw_status status = lw_equation_weights(w->equations, block, &size, &member, &P, error);
     int64_t *column = LW_NEW_ARRAY(int64_t, size * room), *count = LW_NEW_ARRAY(int64_t, size);
-    double *a = LW_NEW_ARRAY(double, size * room), *C = LW_NEW_ARRAY(double, size * size);
-    double *CP = LW_NEW_ARRAY(double, size * size);
+    double *a = LW_NEW_ARRAY(double, size *room), *C = LW_NEW_ARRAY(double, size *size);
+    double *CP = LW_NEW_ARRAY(double, size *size);
     if (status == LW_OK && !(column && count && a && C && CP))
         status = lw_fail_memory(error, "redundancy of a block", (size_t)(size * size) * 16);
     if (status == LW_OK && size > 0) {
@@ -165,12 +167,15 @@ lw_status lw_redundancy_new(const lw_equations *equations, const lw_cofactor *co
     lw_status status = redundancy_alloc(rows, out, error);
     w.out = *out;
     w.status = LW_NEW_ZEROS(lw_status, parts);
-    if (status == LW_OK && !w.status) status = lw_fail_memory(error, "redundancy numbers", (size_t)parts * sizeof(lw_status));
+    if (status == LW_OK && !w.status)
+        status = lw_fail_memory(error, "redundancy numbers", (size_t)parts * sizeof(lw_status));
     if (status == LW_OK) lw_team_run(lw_watch_team(watch), parts, fill_part, &w);
     for (int p = 0; p < parts && status == LW_OK; p++)
-        if (w.status[p] != LW_OK) status = lw_fail_memory(error, "redundancy numbers", (size_t)equations->longest * 16);
+        if (w.status[p] != LW_OK)
+            status = lw_fail_memory(error, "redundancy numbers", (size_t)equations->longest * 16);
     const lw_covariance *covariance = equations->system->problem->covariance;
-    for (int64_t b = 0; covariance && b < covariance->blocks && status == LW_OK; b++) status = fill_block(&w, b, error);
+    for (int64_t b = 0; covariance && b < covariance->blocks && status == LW_OK; b++)
+        status = fill_block(&w, b, error);
     lw_free(w.status);
     if (status != LW_OK) {
         lw_redundancy_free(*out);

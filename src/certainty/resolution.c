@@ -24,7 +24,8 @@ static void product_diagonal(const lw_cofactor *c, const lw_sparse *S, double *d
     }
 }
 
-lw_status lw_resolution_of_entries(const lw_cofactor *c, const lw_watch *watch, double *diagonal, double *trace, lw_error *error)
+lw_status lw_resolution_of_entries(const lw_cofactor *c, const lw_watch *watch, double *diagonal,
+                                   double *trace, lw_error *error)
 {
     lw_system *system = c->decomposition->system;
     lw_sparse *S = NULL;
@@ -34,7 +35,8 @@ lw_status lw_resolution_of_entries(const lw_cofactor *c, const lw_watch *watch, 
     if (c->lambda > 0) {
         status = lw_system_penalty_gram(system, &S, error);
         if (status == LW_OK) product_diagonal(c, S, diagonal);
-        for (int64_t j = 0; j < n && status == LW_OK; j++) diagonal[j] = 1 - c->lambda * c->lambda * diagonal[j];
+        for (int64_t j = 0; j < n && status == LW_OK; j++)
+            diagonal[j] = 1 - c->lambda * c->lambda * diagonal[j];
     } else if (c->defect > 0) {
         status = lw_system_matrix(system, watch, error);
         if (status == LW_OK) status = lw_sparse_gram(system->matrix, NULL, &S, error);
@@ -56,17 +58,19 @@ static lw_status resolve(lw_cofactor *c, int k, const double *v, double *f, doub
     return status > LW_OK && status != LW_INTERRUPTED ? LW_OK : status;
 }
 
-lw_status lw_resolution_by_probes(lw_cofactor *c, const lw_watch *watch, double *diagonal, double *trace, double *spread,
-                                  lw_error *error)
+lw_status lw_resolution_by_probes(lw_cofactor *c, const lw_watch *watch, double *diagonal, double *trace,
+                                  double *spread, lw_error *error)
 {
     lw_system *system = c->decomposition->system;
     int64_t n = c->columns, room = n * PROBES_A_SOLVE;
     const double count = LW_RESOLUTION_PROBES;
     lw_random *random = NULL;
     lw_status status = lw_system_matrix(system, watch, error);
-    double *v = LW_NEW_ARRAY(double, room), *z = LW_NEW_ARRAY(double, room), *squares = LW_NEW_ZEROS(double, n);
-    double *f = LW_NEW_ARRAY(double, system->rows * PROBES_A_SOLVE);
-    if (status == LW_OK && !(v && z && squares && f)) status = lw_fail_memory(error, "the resolution", (size_t)room * 16);
+    double *v = LW_NEW_ARRAY(double, room), *z = LW_NEW_ARRAY(double, room),
+           *squares = LW_NEW_ZEROS(double, n);
+    double *f = LW_NEW_ARRAY(double, system->rows *PROBES_A_SOLVE);
+    if (status == LW_OK && !(v && z && squares && f))
+        status = lw_fail_memory(error, "the resolution", (size_t)room * 16);
     if (status == LW_OK) status = lw_random_new(lw_watch_seed(watch), STREAM, &random, error);
     memset(diagonal, 0, (size_t)n * sizeof *diagonal);
     *trace = *spread = 0;
@@ -79,7 +83,8 @@ lw_status lw_resolution_by_probes(lw_cofactor *c, const lw_watch *watch, double 
             diagonal[i % n] += term / count;
             squares[i % n] += term * term / count;
         }
-        if (lw_watch_cancelled(watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted during the resolution");
+        if (lw_watch_cancelled(watch))
+            status = lw_fail(error, LW_INTERRUPTED, "interrupted during the resolution");
     }
     for (int64_t j = 0; j < n && status == LW_OK; j++) {
         *trace += diagonal[j];
@@ -95,7 +100,8 @@ lw_status lw_resolution_by_probes(lw_cofactor *c, const lw_watch *watch, double 
 }
 
 /* Row j of R is (A'A Q e_j)', and R_jk in model units is R_jk s_j / s_k. */
-static lw_status resolution_row(lw_cofactor *c, int64_t column, double *q, double *image, double *row, lw_error *error)
+static lw_status resolution_row(lw_cofactor *c, int64_t column, double *q, double *image, double *row,
+                                lw_error *error)
 {
     const lw_system *system = c->decomposition->system;
     lw_status status = lw_cofactor_columns(c, 1, &column, q, error);
@@ -107,14 +113,15 @@ static lw_status resolution_row(lw_cofactor *c, int64_t column, double *q, doubl
     return LW_OK;
 }
 
-lw_status lw_resolution_rows(lw_cofactor *c, int64_t count, const int64_t *parameter, const lw_watch *watch, double *rows,
-                             lw_error *error)
+lw_status lw_resolution_rows(lw_cofactor *c, int64_t count, const int64_t *parameter, const lw_watch *watch,
+                             double *rows, lw_error *error)
 {
     lw_system *system = c->decomposition->system;
     int64_t n = system->problem->n;
     lw_status status = lw_system_matrix(system, watch, error);
     double *q = LW_NEW_ARRAY(double, c->columns), *image = LW_NEW_ARRAY(double, system->rows);
-    if (status == LW_OK && !(q && image)) status = lw_fail_memory(error, "rows of the resolution", (size_t)c->columns * 8);
+    if (status == LW_OK && !(q && image))
+        status = lw_fail_memory(error, "rows of the resolution", (size_t)c->columns * 8);
     memset(rows, 0, (size_t)(count * n) * sizeof *rows);
     for (int64_t k = 0; k < count && status == LW_OK; k++)
         if (system->column_of[parameter[k]] >= 0)

@@ -18,7 +18,8 @@ static lw_status know_aside(lw_certainty_work *w, lw_error *error)
     w->known = LW_NEW_ARRAY(double, w->system->rows);
     int64_t *column = LW_NEW_ARRAY(int64_t, e->longest);
     double *a = LW_NEW_ARRAY(double, e->longest), *q = LW_NEW_ARRAY(double, n);
-    lw_status status = w->known && column && a && q ? LW_OK : lw_fail_memory(error, "predictions", (size_t)n * 8);
+    lw_status status =
+        w->known && column && a && q ? LW_OK : lw_fail_memory(error, "predictions", (size_t)n * 8);
     for (int64_t i = 0; i < w->system->rows && status == LW_OK; i++) {
         w->known[i] = (double)NAN;
         if (w->system->row_factor[i] != 0) continue;
@@ -51,8 +52,8 @@ lw_status lw_row_entries(lw_certainty_work *w, lw_error *error)
     lw_status status = own ? lw_shift_new(w->system->rows, &w->shift, error) : LW_OK;
     w->out->shift_of_own = own;
     if (status == LW_OK)
-        status = lw_redundancy_new(&w->equations, w->cofactor, w->known, own ? &w->shift : NULL, w->watch, &w->redundancy,
-                                   error);
+        status = lw_redundancy_new(&w->equations, w->cofactor, w->known, own ? &w->shift : NULL, w->watch,
+                                   &w->redundancy, error);
     if (status == LW_OK && own) status = lw_shift_of_blocks(&w->equations, w->cofactor, &w->shift, error);
     return status;
 }
@@ -92,7 +93,8 @@ static void fill_statistics(lw_certainty_work *w, int64_t i, double divisor)
     lw_certainty *out = w->out;
     const lw_redundancy *r = w->redundancy;
     bool aside = isnan(r->redundancy[i]);
-    double root = sqrt(r->visible[i]), side = aside ? w->estimate->residual[i] * r->visible[i] : w->estimate->weighted[i];
+    double root = sqrt(r->visible[i]),
+           side = aside ? w->estimate->residual[i] * r->visible[i] : w->estimate->weighted[i];
     out->standardized[i] = side / root / divisor;
     out->error_estimate[i] = -side / r->visible[i];
     if (aside) return;
@@ -132,6 +134,7 @@ lw_status lw_row_finish(lw_certainty_work *w, lw_error *error)
         if (r->share[i] >= LW_LEAST_SHARE) fill_statistics(w, i, divisor);
         out->flag[i] = (uint8_t)flag_of(w, i);
     }
-    for (int64_t k = 0; k < 2 * out->inseparable_count; k++) out->flag[out->inseparable[k]] |= LW_FLAG_INSEPARABLE;
+    for (int64_t k = 0; k < 2 * out->inseparable_count; k++)
+        out->flag[out->inseparable[k]] |= LW_FLAG_INSEPARABLE;
     return LW_OK;
 }

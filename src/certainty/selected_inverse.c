@@ -45,7 +45,8 @@ static int64_t gallop(const int64_t *rows, int64_t from, int64_t count, int64_t 
 }
 
 /* Where the rows r[a .. below) stand in supernode t; those of its own columns are found without a search. */
-static void locate(const lw_factor_view *v, int64_t t, const int64_t *r, int64_t a, int64_t below, int64_t *local)
+static void locate(const lw_factor_view *v, int64_t t, const int64_t *r, int64_t a, int64_t below,
+                   int64_t *local)
 {
     const int64_t *rows = v->row + v->row_start[t];
     int64_t count = height_of(v, t), at = width_of(v, t), b = a;
@@ -57,7 +58,8 @@ static void locate(const lw_factor_view *v, int64_t t, const int64_t *r, int64_t
 }
 
 /* Z22 (lower triangle, leading dimension below) from the supernodes that own the rows. */
-static void gather(const lw_factor_view *v, const int64_t *supernode, const int64_t *r, int64_t below, work *w)
+static void gather(const lw_factor_view *v, const int64_t *supernode, const int64_t *r, int64_t below,
+                   work *w)
 {
     for (int64_t a = 0; a < below;) {
         int64_t t = supernode[r[a]], ld = height_of(v, t), end = a;
@@ -92,7 +94,8 @@ static void invert_column(double *l, int64_t below, work *w)
     l[0] = sum;
 }
 
-static lw_status invert_supernode(const lw_factor_view *v, const int64_t *supernode, int64_t s, work *w, lw_error *error)
+static lw_status invert_supernode(const lw_factor_view *v, const int64_t *supernode, int64_t s, work *w,
+                                  lw_error *error)
 {
     int64_t width = width_of(v, s), ld = height_of(v, s), below = ld - width;
     double *l = v->value + v->value_start[s];
@@ -155,7 +158,8 @@ static lw_status copy_values(lw_selected_inverse *inverse, lw_error *error)
     int64_t last = v->supernodes - 1;
     int64_t count = last < 0 ? 0 : v->value_start[last] + width_of(v, last) * height_of(v, last);
     inverse->own_value = LW_NEW_ARRAY(double, count);
-    if (!inverse->own_value) return lw_fail_memory(error, "the selected inverse", (size_t)count * sizeof(double));
+    if (!inverse->own_value)
+        return lw_fail_memory(error, "the selected inverse", (size_t)count * sizeof(double));
     memcpy(inverse->own_value, v->value, (size_t)count * sizeof(double));
     v->value = inverse->own_value;
     return LW_OK;
@@ -170,7 +174,7 @@ static lw_status work_new(const lw_factor_view *v, work *w, lw_error *error)
         if (below * width_of(v, s) > panel) panel = below * width_of(v, s);
     }
     w->y = LW_NEW_ARRAY(double, panel);
-    w->z22 = LW_NEW_ARRAY(double, tall * tall);
+    w->z22 = LW_NEW_ARRAY(double, tall *tall);
     w->local = LW_NEW_ARRAY(int64_t, tall);
     if (w->y && w->z22 && w->local) return LW_OK;
     return lw_fail_memory(error, "the selected inverse", (size_t)(tall * tall + panel) * sizeof(double));
@@ -186,7 +190,8 @@ lw_status lw_selected_inverse_run(lw_selected_inverse *inverse, const lw_factor_
     for (int64_t s = view->supernodes - 1; s >= 0 && status == LW_OK; s--) {
         if (s % 1024 == 0) {
             lw_watch_tick(watch, "inverting", (double)(view->supernodes - s), (double)view->supernodes, "");
-            if (lw_watch_cancelled(watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted while inverting");
+            if (lw_watch_cancelled(watch))
+                status = lw_fail(error, LW_INTERRUPTED, "interrupted while inverting");
         }
         if (status == LW_OK) status = invert_supernode(&inverse->view, inverse->supernode, s, &w, error);
     }
@@ -220,7 +225,8 @@ static int64_t find(const lw_selected_inverse *inverse, int64_t i, int64_t j)
     if (p >= v->first[s + 1]) {
         const int64_t *rows = v->row + v->row_start[s];
         at = gallop(rows, width_of(v, s), ld, p);
-        if (at >= ld || rows[at] != p) return inverse->tree[s] == inverse->tree[inverse->supernode[p]] ? -1 : -2;
+        if (at >= ld || rows[at] != p)
+            return inverse->tree[s] == inverse->tree[inverse->supernode[p]] ? -1 : -2;
     }
     return v->value_start[s] + (q - v->first[s]) * ld + at;
 }

@@ -9,7 +9,8 @@
 
 #define TRIALS LW_SEPARABILITY_TRIALS
 #define STREAM 71
-/* sqrt(2e-9) is one standard deviation of a difference at the limit of 1 - |rho|; 4.5 of them are looked at. */
+/* sqrt(2e-9) is one standard deviation of a difference at the limit of 1 - |rho|; 4.5 of them are looked at.
+ */
 #define WINDOW 2e-4
 #define LIMIT 1e-9
 
@@ -19,9 +20,10 @@ lw_status lw_separability_try(lw_cofactor *cofactor, const lw_watch *watch, doub
     int64_t rows = system->rows;
     lw_random *random = NULL;
     *y = NULL;
-    double *g = LW_NEW_ARRAY(double, rows * TRIALS), *r = LW_NEW_ARRAY(double, rows * TRIALS);
-    double *z = LW_NEW_ARRAY(double, system->columns * TRIALS);
-    lw_status status = g && r && z ? LW_OK : lw_fail_memory(error, "separability", (size_t)(rows * TRIALS) * 16);
+    double *g = LW_NEW_ARRAY(double, rows *TRIALS), *r = LW_NEW_ARRAY(double, rows *TRIALS);
+    double *z = LW_NEW_ARRAY(double, system->columns *TRIALS);
+    lw_status status =
+        g && r && z ? LW_OK : lw_fail_memory(error, "separability", (size_t)(rows * TRIALS) * 16);
     if (status == LW_OK) status = lw_random_new(lw_watch_seed(watch), STREAM, &random, error);
     for (int64_t i = 0; i < rows * TRIALS && status == LW_OK; i++)
         g[i] = system->row_factor && system->row_factor[i % rows] == 0 ? 0 : lw_random_normal(random);
@@ -92,13 +94,14 @@ static void join(int64_t *parent, int64_t i, int64_t j)
         parent[p] = q;
 }
 
-lw_status lw_separability_find(const lw_redundancy *redundancy, const double *y, int64_t **pairs, int64_t *count,
-                               lw_error *error)
+lw_status lw_separability_find(const lw_redundancy *redundancy, const double *y, int64_t **pairs,
+                               int64_t *count, lw_error *error)
 {
     int64_t rows = redundancy->rows, used = 0, found = 0;
     signature *list = LW_NEW_ARRAY(signature, rows);
     int64_t *parent = LW_NEW_ARRAY(int64_t, rows);
-    lw_status status = list && parent ? LW_OK : lw_fail_memory(error, "separability", (size_t)rows * (sizeof *list + 8));
+    lw_status status =
+        list && parent ? LW_OK : lw_fail_memory(error, "separability", (size_t)rows * (sizeof *list + 8));
     *pairs = NULL;
     *count = 0;
     if (status == LW_OK) {

@@ -28,8 +28,11 @@ bool lw_shift_is_cheap(const lw_equations *equations, const lw_cofactor *cofacto
 {
     double a_row = 4 * cofactor->factor_nonzeros + 8 * (double)cofactor->columns;
     const lw_covariance *covariance = equations->system->problem->covariance;
-    if (cofactor->kind == LW_COFACTOR_DENSE) a_row = 2 * (double)cofactor->columns * (double)cofactor->columns;
-    if (covariance) a_row += 2 * (double)equations->system->problem->m / (double)(covariance->blocks > 0 ? covariance->blocks : 1);
+    if (cofactor->kind == LW_COFACTOR_DENSE)
+        a_row = 2 * (double)cofactor->columns * (double)cofactor->columns;
+    if (covariance)
+        a_row += 2 * (double)equations->system->problem->m /
+                 (double)(covariance->blocks > 0 ? covariance->blocks : 1);
     return (double)equations->system->rows * a_row <= LW_SHIFT_WORK;
 }
 
@@ -48,8 +51,8 @@ static lw_status load_block(const lw_equations *equations, int64_t block, block_
     return lw_equation_weights(equations, block, &b->size, &b->member, &b->weights, error);
 }
 
-static lw_status add_side(const lw_equations *equations, int64_t i, block_weights *b, int64_t *column, double *a, double *g,
-                          lw_error *error)
+static lw_status add_side(const lw_equations *equations, int64_t i, block_weights *b, int64_t *column,
+                          double *a, double *g, lw_error *error)
 {
     int64_t block = lw_equation_block(equations, i), at = 0;
     if (block < 0) {
@@ -69,7 +72,8 @@ static lw_status add_side(const lw_equations *equations, int64_t i, block_weight
     return LW_OK;
 }
 
-void lw_shift_take(const lw_system *system, int64_t i, int64_t count, const int64_t *column, const double *z, lw_shift *out)
+void lw_shift_take(const lw_system *system, int64_t i, int64_t count, const int64_t *column, const double *z,
+                   lw_shift *out)
 {
     double largest = 0;
     for (int64_t k = 0; k < count; k++) {
@@ -82,16 +86,17 @@ void lw_shift_take(const lw_system *system, int64_t i, int64_t count, const int6
     }
 }
 
-lw_status lw_shift_of_all(const lw_equations *equations, lw_cofactor *cofactor, const lw_watch *watch, lw_shift *out,
-                          lw_error *error)
+lw_status lw_shift_of_all(const lw_equations *equations, lw_cofactor *cofactor, const lw_watch *watch,
+                          lw_shift *out, lw_error *error)
 {
     const lw_system *system = equations->system;
     int64_t rows = system->rows, n = system->columns;
     block_weights b = {.block = -1};
     lw_status status = lw_shift_new(rows, out, error);
     int64_t *column = LW_NEW_ARRAY(int64_t, equations->longest);
-    double *a = LW_NEW_ARRAY(double, equations->longest), *g = LW_NEW_ARRAY(double, n * ROWS_A_SOLVE);
-    if (status == LW_OK && !(column && a && g)) status = lw_fail_memory(error, "largest shifts", (size_t)n * 8 * ROWS_A_SOLVE);
+    double *a = LW_NEW_ARRAY(double, equations->longest), *g = LW_NEW_ARRAY(double, n *ROWS_A_SOLVE);
+    if (status == LW_OK && !(column && a && g))
+        status = lw_fail_memory(error, "largest shifts", (size_t)n * 8 * ROWS_A_SOLVE);
     for (int64_t from = 0; from < rows && status >= LW_OK; from += ROWS_A_SOLVE) {
         int64_t k = rows - from < ROWS_A_SOLVE ? rows - from : ROWS_A_SOLVE;
         memset(g, 0, (size_t)(n * k) * sizeof *g);
@@ -99,8 +104,10 @@ lw_status lw_shift_of_all(const lw_equations *equations, lw_cofactor *cofactor, 
             if (lw_equation_factor(equations, from + l) != 0)
                 status = add_side(equations, from + l, &b, column, a, g + l * n, error);
         if (status >= LW_OK) status = lw_cofactor_apply(cofactor, k, g, error);
-        for (int64_t l = 0; l < k && status >= LW_OK; l++) lw_shift_take(system, from + l, n, NULL, g + l * n, out);
-        if (lw_watch_cancelled(watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted during the largest shifts");
+        for (int64_t l = 0; l < k && status >= LW_OK; l++)
+            lw_shift_take(system, from + l, n, NULL, g + l * n, out);
+        if (lw_watch_cancelled(watch))
+            status = lw_fail(error, LW_INTERRUPTED, "interrupted during the largest shifts");
     }
     lw_free(b.member);
     lw_free(b.weights);
@@ -124,8 +131,8 @@ static int64_t place_of(int64_t column, int64_t *list, double *g, int64_t *count
 }
 
 /* Largest entry of Q g over the columns where g = A' P e_i has entries, for every member of a block. */
-static lw_status own_block(const lw_equations *equations, const lw_cofactor *cofactor, int64_t block, lw_shift *out,
-                           lw_error *error)
+static lw_status own_block(const lw_equations *equations, const lw_cofactor *cofactor, int64_t block,
+                           lw_shift *out, lw_error *error)
 {
     block_weights b = {.block = -1};
     lw_status status = load_block(equations, block, &b, error);
@@ -157,7 +164,8 @@ static lw_status own_block(const lw_equations *equations, const lw_cofactor *cof
     return status;
 }
 
-lw_status lw_shift_of_blocks(const lw_equations *equations, const lw_cofactor *cofactor, lw_shift *out, lw_error *error)
+lw_status lw_shift_of_blocks(const lw_equations *equations, const lw_cofactor *cofactor, lw_shift *out,
+                             lw_error *error)
 {
     const lw_covariance *covariance = equations->system->problem->covariance;
     lw_status status = LW_OK;

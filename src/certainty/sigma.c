@@ -41,8 +41,9 @@ lw_status lw_variance_of_noise(lw_cofactor *c, const lw_watch *watch, double *va
     lw_system *system = c->decomposition->system;
     int64_t n = c->columns, rows = system->rows, list[COLUMNS_A_SOLVE];
     lw_status status = lw_system_matrix(system, watch, error);
-    double *q = LW_NEW_ARRAY(double, n * COLUMNS_A_SOLVE), *image = LW_NEW_ARRAY(double, rows);
-    if (status == LW_OK && !(q && image)) status = lw_fail_memory(error, "noise variances", (size_t)n * 8 * COLUMNS_A_SOLVE);
+    double *q = LW_NEW_ARRAY(double, n *COLUMNS_A_SOLVE), *image = LW_NEW_ARRAY(double, rows);
+    if (status == LW_OK && !(q && image))
+        status = lw_fail_memory(error, "noise variances", (size_t)n * 8 * COLUMNS_A_SOLVE);
     for (int64_t from = 0; from < n && status == LW_OK; from += COLUMNS_A_SOLVE) {
         int64_t k = n - from < COLUMNS_A_SOLVE ? n - from : COLUMNS_A_SOLVE;
         for (int64_t l = 0; l < k; l++) list[l] = from + l;
@@ -53,7 +54,8 @@ lw_status lw_variance_of_noise(lw_cofactor *c, const lw_watch *watch, double *va
             lw_sparse_apply(system->matrix, 1, q + l * n, image);
             variance[from + l] = square(rows, image);
         }
-        if (lw_watch_cancelled(watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted during standard deviations");
+        if (lw_watch_cancelled(watch))
+            status = lw_fail(error, LW_INTERRUPTED, "interrupted during standard deviations");
     }
     lw_free(q);
     lw_free(image);
@@ -70,15 +72,16 @@ static void draw(const lw_system *system, bool posterior, int64_t tall, int k, l
     }
 }
 
-lw_status lw_variance_by_samples(lw_cofactor *c, bool posterior, int samples, const lw_watch *watch, double *variance,
-                                 lw_error *error)
+lw_status lw_variance_by_samples(lw_cofactor *c, bool posterior, int samples, const lw_watch *watch,
+                                 double *variance, lw_error *error)
 {
     const lw_system *system = c->decomposition->system;
     const lw_decomposition_methods *m = c->decomposition->methods;
     int64_t n = c->columns, tall = system->rows + (c->lambda > 0 ? system->penalty_rows : 0);
     lw_random *random = NULL;
-    double *f = LW_NEW_ARRAY(double, tall * SAMPLES_A_SOLVE), *z = LW_NEW_ARRAY(double, n * SAMPLES_A_SOLVE);
-    lw_status status = f && z ? LW_OK : lw_fail_memory(error, "samples", (size_t)(tall + n) * 8 * SAMPLES_A_SOLVE);
+    double *f = LW_NEW_ARRAY(double, tall *SAMPLES_A_SOLVE), *z = LW_NEW_ARRAY(double, n *SAMPLES_A_SOLVE);
+    lw_status status =
+        f && z ? LW_OK : lw_fail_memory(error, "samples", (size_t)(tall + n) * 8 * SAMPLES_A_SOLVE);
     if (status == LW_OK) status = lw_random_new(lw_watch_seed(watch), STREAM, &random, error);
     memset(variance, 0, (size_t)n * sizeof *variance);
     for (int done = 0; done < samples && status == LW_OK;) {

@@ -36,7 +36,8 @@ static double factor_of(const lw_problem *problem, const double *theta, int64_t 
 }
 
 /* Low parts are dropped: sigmas that are being estimated need no more than a double. */
-static lw_status scale_problem(const lw_problem *problem, const double *theta, int64_t slots, scaled *out, lw_error *error)
+static lw_status scale_problem(const lw_problem *problem, const double *theta, int64_t slots, scaled *out,
+                               lw_error *error)
 {
     const lw_covariance *c = problem->covariance;
     int64_t values = c ? c->value_start[c->blocks] : 0;
@@ -71,13 +72,15 @@ static lw_status scale_problem(const lw_problem *problem, const double *theta, i
 }
 
 /* S_kl += scale * (square of the part of M f_b in group k), f_b supported on group l. */
-static void add_squares(const lw_system *system, int64_t slots, const double *r, int64_t l, double scale, double *S)
+static void add_squares(const lw_system *system, int64_t slots, const double *r, int64_t l, double scale,
+                        double *S)
 {
     for (int64_t i = 0; i < system->rows; i++) S[lw_group_slot(system, i) + l * slots] += scale * r[i] * r[i];
 }
 
 /* Helmert's S, from all unit vectors or from random signs on one group at a time. */
-static lw_status helmert(lw_decomposition *decomposition, int64_t slots, const lw_watch *watch, double *S, lw_error *error)
+static lw_status helmert(lw_decomposition *decomposition, int64_t slots, const lw_watch *watch, double *S,
+                         lw_error *error)
 {
     const lw_system *system = decomposition->system;
     int64_t rows = system->rows, k = COLUMNS_A_SOLVE;
@@ -85,9 +88,10 @@ static lw_status helmert(lw_decomposition *decomposition, int64_t slots, const l
     int64_t trials = exact ? rows : slots * PROBES;
     lw_random *random = NULL;
     lw_status status = lw_random_new(lw_watch_seed(watch), STREAM, &random, error);
-    double *f = LW_NEW_ARRAY(double, rows * k), *r = LW_NEW_ARRAY(double, rows * k);
-    double *z = LW_NEW_ARRAY(double, system->columns * k);
-    if (status == LW_OK && !(f && r && z)) status = lw_fail_memory(error, "variance components", (size_t)(rows * k) * 16);
+    double *f = LW_NEW_ARRAY(double, rows *k), *r = LW_NEW_ARRAY(double, rows *k);
+    double *z = LW_NEW_ARRAY(double, system->columns *k);
+    if (status == LW_OK && !(f && r && z))
+        status = lw_fail_memory(error, "variance components", (size_t)(rows * k) * 16);
     memset(S, 0, (size_t)(slots * slots) * sizeof *S);
     for (int64_t from = 0; from < trials && status == LW_OK; from += k) {
         int64_t count = trials - from < k ? trials - from : k;
@@ -97,7 +101,8 @@ static lw_status helmert(lw_decomposition *decomposition, int64_t slots, const l
             for (int64_t i = 0; !exact && i < rows; i++)
                 if (lw_group_slot(system, i) == (from + b) / PROBES) f[i + b * rows] = lw_random_sign(random);
         }
-        status = decomposition->methods->solve_many(decomposition, 0, count, f, NULL, NULL, r, z, NULL, error);
+        status =
+            decomposition->methods->solve_many(decomposition, 0, count, f, NULL, NULL, r, z, NULL, error);
         if (status > LW_OK && status != LW_INTERRUPTED) status = LW_OK;
         for (int64_t b = 0; b < count && status == LW_OK; b++) {
             bool aside = exact && system->row_factor && system->row_factor[from + b] == 0;
@@ -112,12 +117,14 @@ static lw_status helmert(lw_decomposition *decomposition, int64_t slots, const l
     return status;
 }
 
-/* Inverse of S on the groups that are determined; rows and columns of the others become those of the identity. */
+/* Inverse of S on the groups that are determined; rows and columns of the others become those of the
+ * identity. */
 static lw_status invert_helmert(int64_t slots, const double *redundancy, double *S, lw_error *error)
 {
     int64_t defect = 0;
     for (int64_t l = 0; l < slots; l++) {
-        for (int64_t k = 0; k < l; k++) S[k + l * slots] = S[l + k * slots] = (S[k + l * slots] + S[l + k * slots]) / 2;
+        for (int64_t k = 0; k < l; k++)
+            S[k + l * slots] = S[l + k * slots] = (S[k + l * slots] + S[l + k * slots]) / 2;
     }
     for (int64_t l = 0; l < slots; l++) {
         if (redundancy[l] >= LEAST_REDUNDANCY) continue;
@@ -150,7 +157,8 @@ static void read_groups(const lw_certainty *certainty, state *s)
 
 /* One solution at theta: q, r and the inverse of S. */
 static lw_status evaluate(const lw_problem *problem, const lw_system_options *system_options,
-                          const lw_solve_options *solve_options, const lw_watch *watch, state *s, lw_error *error)
+                          const lw_solve_options *solve_options, const lw_watch *watch, state *s,
+                          lw_error *error)
 {
     scaled scaled_problem = {0};
     lw_system *system = NULL;
@@ -160,13 +168,18 @@ static lw_status evaluate(const lw_problem *problem, const lw_system_options *sy
     lw_engine_choice choice = {0};
     lw_certainty_options wanted = {.confidence = 0.95, .alpha = 0.001, .power = 0.8, .reliability = true};
     lw_status status = scale_problem(problem, s->theta, s->slots, &scaled_problem, error);
-    if (status == LW_OK) status = lw_system_new(&scaled_problem.problem, system_options, watch, &system, error);
-    if (status == LW_OK) status = lw_decompose(system, 0, solve_options, watch, &choice, &decomposition, error);
+    if (status == LW_OK)
+        status = lw_system_new(&scaled_problem.problem, system_options, watch, &system, error);
+    if (status == LW_OK)
+        status = lw_decompose(system, 0, solve_options, watch, &choice, &decomposition, error);
     if (status >= LW_OK) status = decomposition->methods->estimate(decomposition, 0, watch, &estimate, error);
-    if (status >= LW_OK) status = lw_certainty_make(decomposition, estimate, &wanted, false, watch, &certainty, error);
+    if (status >= LW_OK)
+        status = lw_certainty_make(decomposition, estimate, &wanted, false, watch, &certainty, error);
     if (status >= LW_OK && !certainty->redundancy)
-        status = lw_fail(error, LW_BAD_USAGE, "variance components need redundancy numbers, which engine %s cannot give here; "
-                                              "use dense or cholesky", decomposition->methods->engine);
+        status = lw_fail(error, LW_BAD_USAGE,
+                         "variance components need redundancy numbers, which engine %s cannot give here; "
+                         "use dense or cholesky",
+                         decomposition->methods->engine);
     if (status >= LW_OK) read_groups(certainty, s);
     if (status >= LW_OK) status = helmert(decomposition, s->slots, watch, s->S, error);
     if (status >= LW_OK) {
@@ -209,7 +222,7 @@ static lw_status state_new(int64_t slots, state *s, lw_error *error)
     s->theta = LW_NEW_ARRAY(double, 2 * slots);
     s->q = LW_NEW_ARRAY(double, slots);
     s->r = LW_NEW_ARRAY(double, slots);
-    s->S = LW_NEW_ARRAY(double, slots * slots);
+    s->S = LW_NEW_ARRAY(double, slots *slots);
     s->observations = LW_NEW_ARRAY(int64_t, slots);
     if (!s->theta || !s->q || !s->r || !s->S || !s->observations)
         return lw_fail_memory(error, "variance components", (size_t)(slots * slots) * 8);
@@ -220,7 +233,8 @@ static lw_status state_new(int64_t slots, state *s, lw_error *error)
 static lw_status conclude(const state *s, lw_variance_components *out, lw_error *error)
 {
     out->groups = LW_NEW_ARRAY(lw_variance_component, s->slots);
-    if (!out->groups) return lw_fail_memory(error, "variance components", (size_t)s->slots * sizeof *out->groups);
+    if (!out->groups)
+        return lw_fail_memory(error, "variance components", (size_t)s->slots * sizeof *out->groups);
     for (int64_t k = 0; k < s->slots; k++) {
         if (s->observations[k] == 0) continue;
         bool known = s->r[k] >= LEAST_REDUNDANCY;
@@ -235,17 +249,20 @@ static lw_status conclude(const state *s, lw_variance_components *out, lw_error 
 }
 
 lw_status lw_variance_components_estimate(const lw_problem *problem, const lw_system_options *system_options,
-                                          const lw_solve_options *solve_options, int most, const lw_watch *watch,
-                                          lw_variance_components **out, lw_error *error)
+                                          const lw_solve_options *solve_options, int most,
+                                          const lw_watch *watch, lw_variance_components **out,
+                                          lw_error *error)
 {
     state s = {0};
     int64_t slots = (problem->group_names ? lw_ids_count(problem->group_names) : 0) + 2;
     lw_variance_components *c = *out = LW_NEW(lw_variance_components);
-    lw_status status = c ? state_new(slots, &s, error) : lw_fail_memory(error, "variance components", sizeof *c);
+    lw_status status =
+        c ? state_new(slots, &s, error) : lw_fail_memory(error, "variance components", sizeof *c);
     if (most <= 0) most = DEFAULT_STEPS;
     while (status == LW_OK && !c->converged && c->iterations < most) {
         lw_watch_tick(watch, "variance components", c->iterations, most, "");
-        if (lw_watch_cancelled(watch)) status = lw_fail(error, LW_INTERRUPTED, "interrupted during variance components");
+        if (lw_watch_cancelled(watch))
+            status = lw_fail(error, LW_INTERRUPTED, "interrupted during variance components");
         if (status == LW_OK) status = evaluate(problem, system_options, solve_options, watch, &s, error);
         if (status != LW_OK) break;
         c->iterations++;

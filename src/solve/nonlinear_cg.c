@@ -62,12 +62,13 @@ static double between(place a, place b)
 /* Beyond the last place, where no bracket is known yet: secant of the slopes within 1.5 and 10 times. */
 static double beyond(place a, place b)
 {
-    double alpha = b.slope > a.slope ? b.alpha - b.slope * (b.alpha - a.alpha) / (b.slope - a.slope) : 4 * b.alpha;
+    double alpha =
+        b.slope > a.slope ? b.alpha - b.slope * (b.alpha - a.alpha) / (b.slope - a.slope) : 4 * b.alpha;
     return fmin(fmax(alpha, 1.5 * b.alpha), 10 * b.alpha);
 }
 
-/* Strong Wolfe. low always satisfies the decrease and slopes down; high breaks the decrease or slopes up. The decrease is
- * asked for within the rounding of f. Returns 0 where none was found. */
+/* Strong Wolfe. low always satisfies the decrease and slopes down; high breaks the decrease or slopes up. The
+ * decrease is asked for within the rounding of f. Returns 0 where none was found. */
 static double wolfe(work *w, double f, double slope, double first)
 {
     place start = {0, f, slope}, low = start, high = start;
@@ -107,7 +108,8 @@ static double beta_of(const work *w, double square_before)
 static double turn(work *w, double square_before)
 {
     int64_t n = w->objective->n;
-    bool due = w->options.rule == LW_FLETCHER_REEVES && w->out->steps % (n > REEVES_RESTART ? n : REEVES_RESTART) == 0;
+    bool due = w->options.rule == LW_FLETCHER_REEVES &&
+               w->out->steps % (n > REEVES_RESTART ? n : REEVES_RESTART) == 0;
     lw_scale_add(n, -1, w->g, due ? 0 : beta_of(w, square_before), w->d, w->team);
     double slope = lw_dot(n, w->g, w->d, w->team);
     if (slope < 0) return slope;
@@ -119,7 +121,8 @@ static double step_length(work *w, double slope, double last_alpha, double last_
 {
     const lw_objective *o = w->objective;
     if (w->options.search) return w->options.search(o->state, w->x, w->d, slope);
-    double first = last_alpha > 0 ? last_alpha * last_slope / slope : fmin(1, 1 / lw_norm(o->n, w->g, w->team));
+    double first =
+        last_alpha > 0 ? last_alpha * last_slope / slope : fmin(1, 1 / lw_norm(o->n, w->g, w->team));
     if (o->aim) o->aim(o->state, w->x, w->d);
     return wolfe(w, w->out->value, slope, first);
 }
@@ -166,8 +169,8 @@ static void iterate(work *w)
     }
 }
 
-lw_status lw_nonlinear_cg(const lw_objective *objective, const lw_cg_options *options, double *x, lw_cg_result *out,
-                          const lw_watch *watch, lw_error *error)
+lw_status lw_nonlinear_cg(const lw_objective *objective, const lw_cg_options *options, double *x,
+                          lw_cg_result *out, const lw_watch *watch, lw_error *error)
 {
     work w = {.objective = objective, .watch = watch, .team = lw_watch_team(watch), .x = x, .out = out};
     int64_t n = objective->n;

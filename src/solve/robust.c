@@ -56,9 +56,9 @@ typedef struct work {
     const lw_solve_options *solve_options;
     const lw_robust_options *options;
     const lw_watch *watch;
-    lw_system *base;      /* without robust weights: whitens */
-    double *factor;       /* rows: base factor times sqrt(weight) */
-    double *r, *before;   /* rows, whitened */
+    lw_system *base;        /* without robust weights: whitens */
+    double *factor;         /* rows: base factor times sqrt(weight) */
+    double *r, *before;     /* rows, whitened */
     double constant, floor; /* floor: e of the l1 weights */
     lw_robust *out;
 } work;
@@ -74,7 +74,8 @@ static lw_status solve_weighted(work *w, lw_error *error)
     lw_status status = lw_system_new(w->problem, &w->system_options, w->watch, &system, error);
     if (status == LW_OK)
         status = lw_decompose(system, w->lambda, w->solve_options, w->watch, &choice, &decomposition, error);
-    if (status >= LW_OK) status = decomposition->methods->estimate(decomposition, w->lambda, w->watch, &estimate, error);
+    if (status >= LW_OK)
+        status = decomposition->methods->estimate(decomposition, w->lambda, w->watch, &estimate, error);
     if (status >= LW_OK) {
         lw_copy(w->base->rows, estimate->residual, w->r);
         lw_system_whiten(w->base, 1, w->r);
@@ -108,13 +109,15 @@ static double change_of(const work *w)
     return size > 0 ? lw_norm(rows, difference, NULL) / size : 0;
 }
 
-/* Huber: weights, solution, scale in turn. Converged within the tolerance, or where rounding allows no more. */
+/* Huber: weights, solution, scale in turn. Converged within the tolerance, or where rounding allows no more.
+ */
 static lw_status iterate_huber(work *w, double tolerance, int64_t most, lw_error *error)
 {
     lw_robust *out = w->out;
-    double last = INFINITY;
+    double last = HUGE_VAL;
     lw_status status = solve_weighted(w, error);
-    for (out->iterations = 0; out->iterations < most && !out->converged && status == LW_OK; out->iterations++) {
+    for (out->iterations = 0; out->iterations < most && !out->converged && status == LW_OK;
+         out->iterations++) {
         if (!w->options->scale_stated)
             status = lw_robust_scale(w->base->rows, w->r, w->base->row_factor, &out->scale, error);
         if (status != LW_OK || out->scale <= 0) break;
@@ -135,22 +138,25 @@ static lw_status iterate_huber(work *w, double tolerance, int64_t most, lw_error
 static bool wants_vertex(const work *w)
 {
     const lw_system *s = w->base;
-    return w->options->misfit == LW_MISFIT_L1 && !(w->lambda > 0) && s->conditions == 0 && !s->problem->covariance &&
-           s->columns > 0 && s->columns <= LW_VERTEX_MOST && s->rows_used >= s->columns &&
-           s->columns * s->rows <= INT64_C(20000000);
+    return w->options->misfit == LW_MISFIT_L1 && !(w->lambda > 0) && s->conditions == 0 &&
+           !s->problem->covariance && s->columns > 0 && s->columns <= LW_VERTEX_MOST &&
+           s->rows_used >= s->columns && s->columns * s->rows <= INT64_C(20000000);
 }
 
-/* l1: e falls by decades from the scale, some reweightings at each: few where a vertex is looked for afterwards. */
+/* l1: e falls by decades from the scale, some reweightings at each: few where a vertex is looked for
+ * afterwards. */
 static lw_status iterate_l1(work *w, double tolerance, int64_t most, lw_error *error)
 {
     lw_robust *out = w->out;
     lw_status status = solve_weighted(w, error);
-    if (status == LW_OK) status = lw_robust_scale(w->base->rows, w->r, w->base->row_factor, &out->scale, error);
+    if (status == LW_OK)
+        status = lw_robust_scale(w->base->rows, w->r, w->base->row_factor, &out->scale, error);
     double least = out->scale * 1e-9, share = wants_vertex(w) ? 1e-2 : 1e-4;
     int rounds = wants_vertex(w) ? 20 : 200;
     for (w->floor = out->scale; status == LW_OK && w->floor > least && w->floor > 0; w->floor /= 10) {
         double change = 1;
-        for (int round = 0; round < rounds && change > tolerance && out->iterations < most && status == LW_OK; round++) {
+        for (int round = 0; round < rounds && change > tolerance && out->iterations < most && status == LW_OK;
+             round++) {
             lw_copy(w->base->rows, w->r, w->before);
             reweight(w, 0);
             status = solve_weighted(w, error);
@@ -167,7 +173,8 @@ static lw_status finish_vertex(work *w, lw_error *error)
 {
     int64_t rows = w->base->rows;
     bool *in = LW_NEW_ZEROS(bool, rows);
-    lw_status status = in ? lw_system_matrix(w->base, w->watch, error) : lw_fail_memory(error, "the l1 vertex", (size_t)rows);
+    lw_status status = in ? lw_system_matrix(w->base, w->watch, error)
+                          : lw_fail_memory(error, "the l1 vertex", (size_t)rows);
     if (status == LW_OK) status = lw_robust_vertex(w->base, w->r, in, error);
     if (status == LW_OK) {
         for (int64_t i = 0; i < rows; i++)
@@ -206,11 +213,13 @@ static lw_status by_gradients(work *w, lw_error *error)
     double *z = LW_NEW_ZEROS(double, base->columns);
     if (!z) return lw_fail_memory(error, "conjugate gradients", (size_t)base->columns * 8);
     out->way = "conjugate gradients";
-    lw_status status = base->conditions > 0 ? lw_fail(error, LW_BAD_USAGE, "conjugate gradients take no exact conditions; use "
-                                                                           "engine dense or cholesky with a robust misfit")
+    lw_status status = base->conditions > 0 ? lw_fail(error, LW_BAD_USAGE,
+                                                      "conjugate gradients take no exact conditions; use "
+                                                      "engine dense or cholesky with a robust misfit")
                                             : LW_OK;
     if (status == LW_OK)
-        status = lw_robust_descend(base, w->lambda, w->options, w->watch, z, &out->scale, &out->iterations, error);
+        status =
+            lw_robust_descend(base, w->lambda, w->options, w->watch, z, &out->scale, &out->iterations, error);
     out->converged = status == LW_OK;
     if (status >= LW_OK) {
         lw_status made = lw_estimate_from_model(base, w->lambda, z, NULL, 0, &out->estimate, error);
@@ -266,10 +275,14 @@ static lw_status minimise(work *w, lw_error *error)
 }
 
 lw_status lw_robust_solve(const lw_problem *problem, const lw_system_options *system_options, double lambda,
-                          const lw_solve_options *solve_options, const lw_robust_options *options, const lw_watch *watch,
-                          lw_robust **out, lw_error *error)
+                          const lw_solve_options *solve_options, const lw_robust_options *options,
+                          const lw_watch *watch, lw_robust **out, lw_error *error)
 {
-    work w = {.problem = problem, .lambda = lambda, .solve_options = solve_options, .options = options, .watch = watch};
+    work w = {.problem = problem,
+              .lambda = lambda,
+              .solve_options = solve_options,
+              .options = options,
+              .watch = watch};
     w.constant = options->constant > 0 ? options->constant : LW_HUBER_CONSTANT;
     if (system_options) w.system_options = *system_options;
     *out = NULL;

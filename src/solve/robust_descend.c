@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Robust misfits by nonlinear conjugate gradients on the operator: one product with A and one with A' a step, trials along a
- * line from r and A d alone. F(z) = sum phi_c(r_i) / c' + lambda^2 ||L z||^2 with r = A z - b; c' = 1 (huber) or c (l1, whose
- * c falls until it no longer matters). */
+/* Robust misfits by nonlinear conjugate gradients on the operator: one product with A and one with A' a step,
+ * trials along a line from r and A d alone. F(z) = sum phi_c(r_i) / c' + lambda^2 ||L z||^2 with r = A z - b;
+ * c' = 1 (huber) or c (l1, whose c falls until it no longer matters). */
 #include "core/memory.h"
 #include "matrix/vector.h"
 #include "solve/robust.h"
@@ -81,10 +81,11 @@ static double along(void *state, double alpha, double *slope)
 }
 
 /* Minimises at one c. */
-static lw_status descend_at(loss *l, double c, const lw_robust_options *options, double tolerance, const lw_watch *watch,
-                            double *z, int64_t *steps, lw_error *error)
+static lw_status descend_at(loss *l, double c, const lw_robust_options *options, double tolerance,
+                            const lw_watch *watch, double *z, int64_t *steps, lw_error *error)
 {
-    lw_objective objective = {.n = l->system->columns, .state = l, .value = value, .aim = aim, .along = along};
+    lw_objective objective = {
+        .n = l->system->columns, .state = l, .value = value, .aim = aim, .along = along};
     lw_cg_options cg = {.rule = options->rule, .tolerance = tolerance, .curvature = 0.1};
     lw_cg_result result;
     l->c = c;
@@ -95,8 +96,8 @@ static lw_status descend_at(loss *l, double c, const lw_robust_options *options,
 }
 
 /* Huber with a scale that is estimated: c and z in turn until the scale stands still. */
-static lw_status descend_huber(loss *l, const lw_robust_options *options, const lw_watch *watch, double *z, double *scale,
-                               int64_t *steps, lw_error *error)
+static lw_status descend_huber(loss *l, const lw_robust_options *options, const lw_watch *watch, double *z,
+                               double *scale, int64_t *steps, lw_error *error)
 {
     double constant = options->constant > 0 ? options->constant : LW_HUBER_CONSTANT, before = 0;
     lw_status status = LW_OK;
@@ -111,20 +112,22 @@ static lw_status descend_huber(loss *l, const lw_robust_options *options, const 
     return status == LW_OK ? LW_NOT_CONVERGED : status;
 }
 
-static lw_status descend_l1(loss *l, const lw_robust_options *options, const lw_watch *watch, double *z, double *scale,
-                            int64_t *steps, lw_error *error)
+static lw_status descend_l1(loss *l, const lw_robust_options *options, const lw_watch *watch, double *z,
+                            double *scale, int64_t *steps, lw_error *error)
 {
     value(l, z, l->pd);
-    lw_status status = lw_robust_scale(l->system->rows, l->r, l->system->row_factor, scale, error), worst = LW_OK;
-    for (double c = *scale; status >= LW_OK && status != LW_INTERRUPTED && c > 1e-7 * *scale && c > 0; c *= 0.2) {
+    lw_status status = lw_robust_scale(l->system->rows, l->r, l->system->row_factor, scale, error),
+              worst = LW_OK;
+    for (double c = *scale; status >= LW_OK && status != LW_INTERRUPTED && c > 1e-7 * *scale && c > 0;
+         c *= 0.2) {
         status = descend_at(l, c, options, 1e-8, watch, z, steps, error);
         worst = status > LW_OK ? status : LW_OK;
     }
     return status < LW_OK || status == LW_INTERRUPTED ? status : worst;
 }
 
-lw_status lw_robust_descend(lw_system *system, double lambda, const lw_robust_options *options, const lw_watch *watch,
-                            double *z, double *scale, int64_t *steps, lw_error *error)
+lw_status lw_robust_descend(lw_system *system, double lambda, const lw_robust_options *options,
+                            const lw_watch *watch, double *z, double *scale, int64_t *steps, lw_error *error)
 {
     loss l = {.system = system, .lambda = lambda, .c = 1, .divisor = 1, .team = lw_watch_team(watch)};
     lw_product_options product = {0};

@@ -1,11 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The vertex of an l1 fit. B: as many rows as columns, met exactly; with s_i the signs of the other residuals,
+/* The vertex of an l1 fit. B: as many rows as columns, met exactly; with s_i the signs of the other
+ * residuals,
  *
  *     A_B' y = -sum_{i not in B} s_i a_i,   optimal when |y_j| <= 1 for all j in B
  *
- * otherwise row j with the largest |y_j| leaves: z moves along d, A_B d = sign(y_j) e_j, down to the weighted median of the
- * places where other residuals change sign; the row that stands there enters.
- * Source: Barrodale & Roberts, SIAM J. Numer. Anal. 10:839-848, 1973. */
+ * otherwise row j with the largest |y_j| leaves: z moves along d, A_B d = sign(y_j) e_j, down to the weighted
+ * median of the places where other residuals change sign; the row that stands there enters. Source: Barrodale
+ * & Roberts, SIAM J. Numer. Anal. 10:839-848, 1973. */
 #include "core/memory.h"
 #include "matrix/dense.h"
 #include "solve/robust.h"
@@ -21,15 +22,15 @@ typedef struct crossing {
 } crossing;
 
 typedef struct vertex {
-    const lw_sparse *A;   /* rows x n */
+    const lw_sparse *A; /* rows x n */
     const double *b, *factor;
     int64_t n, rows;
-    int64_t *basis;       /* n rows */
-    bool *in;             /* rows */
-    double *r, *change;   /* rows: residuals, and their change along d */
-    double *z, *g, *d;    /* n */
-    lw_dense_qr qr;       /* of A_B' : n x n */
-    crossing *crossings;  /* rows */
+    int64_t *basis;      /* n rows */
+    bool *in;            /* rows */
+    double *r, *change;  /* rows: residuals, and their change along d */
+    double *z, *g, *d;   /* n */
+    lw_dense_qr qr;      /* of A_B' : n x n */
+    crossing *crossings; /* rows */
 } vertex;
 
 /* A_B x = c for c by place in the basis: A_B' P = Q R, so A_B = P R'Q' . */
@@ -59,11 +60,11 @@ static lw_status solve_dual(const vertex *v, double *c, lw_error *error)
 }
 
 /* QR of the rows listed, weighted, as columns: n x count. place: rows, -1 elsewhere. */
-static lw_status factor_rows(const vertex *v, int64_t count, const int64_t *list, const double *weight, lw_dense_qr *out,
-                             lw_error *error)
+static lw_status factor_rows(const vertex *v, int64_t count, const int64_t *list, const double *weight,
+                             lw_dense_qr *out, lw_error *error)
 {
     int64_t *place = LW_NEW_ARRAY(int64_t, v->rows);
-    double *D = LW_NEW_ZEROS(double, v->n * count);
+    double *D = LW_NEW_ZEROS(double, v->n *count);
     if (!place || !D) {
         lw_free(place);
         lw_free(D);
@@ -178,7 +179,8 @@ static lw_status exchange(vertex *v, bool *done, lw_error *error)
 lw_status lw_robust_vertex(const lw_system *system, const double *r, bool *in, lw_error *error)
 {
     int64_t n = system->columns, rows = system->rows;
-    vertex v = {.A = system->matrix, .b = system->b, .factor = system->row_factor, .n = n, .rows = rows, .in = in};
+    vertex v = {
+        .A = system->matrix, .b = system->b, .factor = system->row_factor, .n = n, .rows = rows, .in = in};
     memset(in, 0, (size_t)rows * sizeof *in);
     v.basis = LW_NEW_ARRAY(int64_t, n);
     v.r = LW_NEW_ARRAY(double, 2 * rows);
@@ -194,7 +196,8 @@ lw_status lw_robust_vertex(const lw_system *system, const double *r, bool *in, l
         status = first_basis(&v, r, error);
     }
     bool done = false;
-    for (int64_t step = 0; step < 20 * n + 100 && !done && status == LW_OK; step++) status = exchange(&v, &done, error);
+    for (int64_t step = 0; step < 20 * n + 100 && !done && status == LW_OK; step++)
+        status = exchange(&v, &done, error);
     if (status == LW_OK && !done) status = LW_QUALIFIED;
     lw_dense_qr_clear(&v.qr);
     lw_free(v.basis);

@@ -56,8 +56,8 @@ def script(place, figures):
     folder = place.folder(matrix, os.path.basename(matrix)[:-4], 'ordered')
     top = largest_singular(matrix)
     low, high, damping, out = repr(top * 0.01), repr(top), repr(top * 0.02), os.path.join(place.data, 'script-run')
-    solve = [place.program, 'solve', folder, '--engine', 'lsqr', '--no-sigma', '--damping', damping, '--quiet', '--overwrite', '-o', out]
-    sweep = [place.program, 'sweep', folder, '--engine', 'lsqr', '--no-sigma', '--dampings', f'{low}:{high}:50', '--criteria',
+    solve = [place.program, 'solve', folder, '--engine', 'lsqr', '--sigma', 'none', '--damping', damping, '--quiet', '--overwrite', '-o', out]
+    sweep = [place.program, 'sweep', folder, '--engine', 'lsqr', '--sigma', 'none', '--dampings', f'{low}:{high}:50', '--criteria',
              'corner,discrepancy', '--models', 'chosen', '--quiet', '--overwrite', '-o', out + '-sweep']
     python = [place.script('contender.py'), 'script', folder, os.path.join(place.data, 'script.csv')]
     dampings = [repr(float(x)) for x in np.geomspace(float(low), float(high), 50)]
@@ -83,7 +83,7 @@ def memory(place, figures):
     damping = repr(0.02 * largest_singular(matrix))
     run([place.program, 'pack', folder, '-o', packed, '--quiet', '--overwrite'])
     idle = run([place.program, '--version'])['process_rss']
-    options = ['--engine', 'lsqr', '--no-sigma', '--damping', damping, '--quiet', '--overwrite', '-o', os.path.join(place.data, 'memory-run')]
+    options = ['--engine', 'lsqr', '--sigma', 'none', '--damping', damping, '--quiet', '--overwrite', '-o', os.path.join(place.data, 'memory-run')]
     for name, source, wanted in (('packed problem', packed, 20), ('CSV', folder, 40)):
         peak = run([place.program, 'solve', source, *options], (0, 1))['process_rss']
         each = (peak - idle - 12 * vectors) / A.nnz

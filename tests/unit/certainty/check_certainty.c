@@ -7,11 +7,12 @@
 
 lw_certainty_options default_options(void)
 {
-    return (lw_certainty_options){.confidence = 0.95, .alpha = 0.001, .power = 0.80, .sigma = true, .reliability = true};
+    return (lw_certainty_options){
+        .confidence = 0.95, .alpha = 0.001, .power = 0.80, .sigma = true, .reliability = true};
 }
 
-adjusted adjust(lw_problem *problem, const char *engine, const double *row_factor, int datum_free, double lambda,
-                const lw_certainty_options *options)
+adjusted adjust(lw_problem *problem, const char *engine, const double *row_factor, int datum_free,
+                double lambda, const lw_certainty_options *options)
 {
     adjusted a = {.problem = problem};
     lw_error error = {0};

@@ -27,11 +27,12 @@ typedef struct adjusted {
 /** What `solve` takes by default: 0.95, 0.001, 0.80, everything wanted. */
 lw_certainty_options default_options(void);
 /** row_factor: rows or NULL; datum_free: a free network; lambda 0: undamped. */
-adjusted adjust(lw_problem *problem, const char *engine, const double *row_factor, int datum_free, double lambda,
-                const lw_certainty_options *options);
+adjusted adjust(lw_problem *problem, const char *engine, const double *row_factor, int datum_free,
+                double lambda, const lw_certainty_options *options);
 void adjusted_clear(adjusted *a);
 
-#define ck_close(a, b, relative)                                                                                       \
-    ck_assert_msg(fabs((a) - (b)) <= (relative) * fabs(b), "%s = %.17g, expected %.17g", #a, (double)(a), (double)(b))
+#define ck_close(a, b, relative)                                                                             \
+    ck_assert_msg(fabs((a) - (b)) <= (relative)*fabs(b), "%s = %.17g, expected %.17g", #a, (double)(a),      \
+                  (double)(b))
 
 #endif

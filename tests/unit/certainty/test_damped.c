@@ -60,7 +60,8 @@ START_TEST(test_sigma_and_resolution)
     const lw_certainty *c = a.certainty;
     by_definition(p, Q, R, QNQ);
     const double *V = posterior ? Q : QNQ;
-    double precise = _i % 3 == 2 ? 1e-3 : 1e-10; /* columns of an iterative engine are solved to its tolerance */
+    double precise =
+        _i % 3 == 2 ? 1e-3 : 1e-10; /* columns of an iterative engine are solved to its tolerance */
     for (int j = 0; j < N; j++) {
         ck_close(c->sigma[j], sqrt(V[j + j * N]), 1e-10);
         ck_assert_int_eq(c->sigma_kind[j], LW_SIGMA_EXACT);

@@ -28,14 +28,16 @@ static void set_points(lw_problem *p, const int32_t *point, const int8_t *axis, 
     }
 }
 
-/* Six baselines of a satellite network, one point held, variances stated (a university assignment with a textbook's
- * network). Rows: dX, dY, dZ of each; parameters X, Y, Z of B, C, D. */
+/* Six baselines of a satellite network, one point held, variances stated (a university assignment with a
+ * textbook's network). Rows: dX, dY, dZ of each; parameters X, Y, Z of B, C, D. */
 static const int baseline_from[] = {0, -1, -1, 0, 2, 2}, baseline_to[] = {1, 0, 1, 2, -1, 1};
-static const double baseline[6][3] = {{3960.5442, -6681.2467, -7279.0148}, {7683.6883, 10282.4550, 10678.3008},
-                                      {11644.2232, 3601.2165, 3399.2550},  {-6567.2310, -5686.3033, -6322.3807},
-                                      {-1116.4523, -4596.1610, -4355.8962}, {10527.7852, -994.9377, -956.6246}};
-static const double variance[6][3] = {{2.31e-4, 2.55e-4, 2.25e-4}, {7.24e-4, 6.76e-4, 7.31e-4}, {9.88e-4, 9.38e-4, 9.83e-4},
-                                      {5.51e-5, 7.47e-5, 6.63e-5}, {7.48e-5, 6.59e-5, 7.62e-5}, {2.57e-4, 2.16e-4, 2.40e-4}};
+static const double baseline[6][3] = {
+    {3960.5442, -6681.2467, -7279.0148},  {7683.6883, 10282.4550, 10678.3008},
+    {11644.2232, 3601.2165, 3399.2550},   {-6567.2310, -5686.3033, -6322.3807},
+    {-1116.4523, -4596.1610, -4355.8962}, {10527.7852, -994.9377, -956.6246}};
+static const double variance[6][3] = {{2.31e-4, 2.55e-4, 2.25e-4}, {7.24e-4, 6.76e-4, 7.31e-4},
+                                      {9.88e-4, 9.38e-4, 9.83e-4}, {5.51e-5, 7.47e-5, 6.63e-5},
+                                      {7.48e-5, 6.59e-5, 7.62e-5}, {2.57e-4, 2.16e-4, 2.40e-4}};
 static const double point_A[] = {-1158153.412, 6245521.400, 594495.631};
 
 static lw_problem *baselines(void)
@@ -59,24 +61,25 @@ static lw_problem *baselines(void)
 
 START_TEST(test_baselines)
 {
-    static const double sigma[] = {0.00999226060173722, 0.0101780331452188, 0.0103234913241015,
-                                   0.0128482013127790,  0.0124335544935865, 0.0127497559594879,
+    static const double sigma[] = {0.00999226060173722, 0.0101780331452188,  0.0103234913241015,
+                                   0.0128482013127790,  0.0124335544935865,  0.0127497559594879,
                                    0.00803384976141933, 0.00758346810878728, 0.00810521601473771};
-    static const double redundancy[] = {0.473998546962146, 0.511761076532079, 0.469208413355251, 0.862092165838356,
-                                        0.846756865820751, 0.854207287115185, 0.832918748002333, 0.835188403683385,
-                                        0.834632475049343, 0.160131091185151, 0.211634174969008, 0.190159439590419,
-                                        0.137129117793349, 0.127329460440155, 0.137867104388968, 0.533730330218665,
-                                        0.467330018554621, 0.513925280500833};
-    static const double w[] = {0.305265646694169,  0.243922268110629, 0.188734509424674,  -0.165321964791511,
-                               0.343227737030764,  -0.813980273467695, 0.291565011339284, 0.0999740183491647,
-                               0.439859277753276,  -0.362328555516423, 0.0229242020899187, -0.680490124795144};
+    static const double redundancy[] = {
+        0.473998546962146, 0.511761076532079, 0.469208413355251, 0.862092165838356, 0.846756865820751,
+        0.854207287115185, 0.832918748002333, 0.835188403683385, 0.834632475049343, 0.160131091185151,
+        0.211634174969008, 0.190159439590419, 0.137129117793349, 0.127329460440155, 0.137867104388968,
+        0.533730330218665, 0.467330018554621, 0.513925280500833};
+    static const double w[] = {0.305265646694169, 0.243922268110629,  0.188734509424674,  -0.165321964791511,
+                               0.343227737030764, -0.813980273467695, 0.291565011339284,  0.0999740183491647,
+                               0.439859277753276, -0.362328555516423, 0.0229242020899187, -0.680490124795144};
     lw_problem *p = baselines();
     lw_certainty_options options = default_options();
     adjusted a = adjust(p, _i ? "cholesky" : "dense", NULL, 0, 0, &options);
     const lw_certainty *c = a.certainty;
     for (int j = 0; j < 9; j++) ck_close(c->sigma[j], sigma[j], 1e-12);
     for (int i = 0; i < 18; i++) ck_close(c->redundancy[i], redundancy[i], 1e-11);
-    for (int i = 0; i < 12; i++) ck_close(c->standardized[i], w[i], 1e-5); /* coordinates of 6e6 m held in doubles by the test */
+    for (int i = 0; i < 12; i++)
+        ck_close(c->standardized[i], w[i], 1e-5); /* coordinates of 6e6 m held in doubles by the test */
     ck_close(c->test.chi_square, 1.44306526962502, 1e-6);
     ck_close(c->test.probability, 2 * (1 - 0.997547512171), 1e-5);
     ck_assert(c->test.rejected && !c->test.too_high);
@@ -92,7 +95,7 @@ END_TEST
 START_TEST(test_ellipsoids)
 {
     static const int32_t point[] = {0, 0, 0, 1, 1, 1, 2, 2, 2};
-    static const int8_t axis[] = {LW_AXIS_EAST, LW_AXIS_NORTH, LW_AXIS_UP, LW_AXIS_EAST, LW_AXIS_NORTH,
+    static const int8_t axis[] = {LW_AXIS_EAST, LW_AXIS_NORTH, LW_AXIS_UP,    LW_AXIS_EAST, LW_AXIS_NORTH,
                                   LW_AXIS_UP,   LW_AXIS_EAST,  LW_AXIS_NORTH, LW_AXIS_UP};
     lw_problem *p = baselines();
     set_points(p, point, axis, 3);
@@ -121,12 +124,13 @@ START_TEST(test_ellipsoids)
 }
 END_TEST
 
-/* Three distances to one point (textbook trilateration): the equations linearized at the solution, so that the correction is
- * zero, the residuals are those of the last iteration. */
+/* Three distances to one point (textbook trilateration): the equations linearized at the solution, so that
+ * the correction is zero, the residuals are those of the last iteration. */
 START_TEST(test_trilateration)
 {
     static const double station[3][2] = {{865.40, 4527.15}, {2432.55, 2047.25}, {2865.22, 27.15}};
-    static const double distance[] = {6049.00, 4736.83, 5446.49}, xy[] = {6861.316787718086, 3727.818565717482};
+    static const double distance[] = {6049.00, 4736.83, 5446.49},
+                        xy[] = {6861.316787718086, 3727.818565717482};
     static const double residual[] = {-0.0373726504379277, 0.0767928419795588, -0.0473655733514315};
     static const double redundancy[] = {0.146446816358146, 0.618320461216054, 0.235232722425801};
     static const int32_t point[] = {0, 0};
@@ -167,11 +171,16 @@ START_TEST(test_trilateration)
 }
 END_TEST
 
-/* Ellipses from cofactors: a textbook case ("Adjustment Computations", chapter on error ellipses) and exact ones. */
+/* Ellipses from cofactors: a textbook case ("Adjustment Computations", chapter on error ellipses) and exact
+ * ones. */
 START_TEST(test_ellipse_axes)
 {
-    static const double in[6][4] = {{0.136, 1.198574, -1.160249, 2.634937}, {1, 4, 0, 1},  {1, 2, 1, 2},
-                                    {1, 2, -1, 2},                          {1, 3, 0, 3}, {1, 17, 12, 10}};
+    static const double in[6][4] = {{0.136, 1.198574, -1.160249, 2.634937},
+                                    {1, 4, 0, 1},
+                                    {1, 2, 1, 2},
+                                    {1, 2, -1, 2},
+                                    {1, 3, 0, 3},
+                                    {1, 17, 12, 10}};
     static const double out[6][3] = {{0.246355016405838, 0.101063471876238, 150.878528302288},
                                      {2, 1, 90},
                                      {1.73205080756888, 1, 45},

@@ -37,7 +37,8 @@ static lw_outlier_log *search(const lw_problem *p, const char *engine, bool esti
     lw_outlier_log *log = NULL;
     lw_error error = {0};
     options.variance_estimated = estimated;
-    lw_status status = lw_outlier_search(p, &system_options, &solve_options, &options, most, NULL, &log, &error);
+    lw_status status =
+        lw_outlier_search(p, &system_options, &solve_options, &options, most, NULL, &log, &error);
     ck_assert_msg(status == LW_OK, "%s", error.text);
     return log;
 }
@@ -58,7 +59,8 @@ START_TEST(test_clean_networks)
 }
 END_TEST
 
-/* Three gross errors are found, the most significant first, and every statistic is that of a full solution. */
+/* Three gross errors are found, the most significant first, and every statistic is that of a full solution.
+ */
 START_TEST(test_three_errors)
 {
     lw_problem *p = levelling_net(9);
@@ -91,15 +93,16 @@ START_TEST(test_three_errors)
     for (int k = 3; k < 6; k++) ck_assert_str_eq(log->steps[k].action, "kept aside");
     adjusted a = adjust(p, "dense", log->row_factor, 0, 0, &options);
     for (int64_t i = 0; i < M; i++)
-        if (log->row_factor[i] != 0) ck_assert_double_le(fabs(a.certainty->standardized[i]), a.certainty->family_critical);
+        if (log->row_factor[i] != 0)
+            ck_assert_double_le(fabs(a.certainty->standardized[i]), a.certainty->family_critical);
     adjusted_clear(&a);
     lw_outlier_log_free(log);
     lw_problem_free(p);
 }
 END_TEST
 
-/* A line fit in which two gross errors at one end make the good reading far out, which holds the slope, look worst: it is set
- * aside first and comes back once the two are out. */
+/* A line fit in which two gross errors at one end make the good reading far out, which holds the slope, look
+ * worst: it is set aside first and comes back once the two are out. */
 START_TEST(test_reinstated)
 {
     double A[22], y[11], sigma[11];
@@ -112,7 +115,8 @@ START_TEST(test_reinstated)
     }
     lw_problem *p = problem_from_dense(11, 2, A, y, sigma);
     lw_outlier_log *log = search(p, "dense", false, 6);
-    static const char *const action[] = {"set aside", "set aside", "set aside", "reinstated", "kept aside", "kept aside"};
+    static const char *const action[] = {"set aside",  "set aside",  "set aside",
+                                         "reinstated", "kept aside", "kept aside"};
     static const int64_t row[] = {10, 8, 9, 10, 8, 9};
     ck_assert_int_eq(log->count, 6);
     ck_assert_int_eq(log->set_aside, 2);
@@ -131,11 +135,13 @@ START_TEST(test_reinstated)
 }
 END_TEST
 
-/* Two lines tie a point to the net: an error in one cannot be told from one in the other, so neither is set aside. */
+/* Two lines tie a point to the net: an error in one cannot be told from one in the other, so neither is set
+ * aside. */
 START_TEST(test_inseparable_is_kept)
 {
     double A[6 * 2] = {1, 0, 1, 0, 1, 0, 1, 0, 0, 1, -1, 1};
-    static const double y[] = {1, 1.001, 0.999, 1.0005, 5, 4.9}, sigma[] = {0.001, 0.001, 0.001, 0.001, 0.001, 0.001};
+    static const double y[] = {1, 1.001, 0.999, 1.0005, 5, 4.9},
+                        sigma[] = {0.001, 0.001, 0.001, 0.001, 0.001, 0.001};
     lw_problem *p = problem_from_dense(6, 2, A, y, sigma);
     lw_outlier_log *log = search(p, "dense", false, 0);
     ck_assert_int_eq(log->set_aside, 0);

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Reliability by its properties: sums, deletion of readings, correlated and singular cases, false alarms and power. */
+/* Reliability by its properties: sums, deletion of readings, correlated and singular cases, false alarms and
+ * power. */
 #include "check_certainty.h"
 
 #include "core/chance.h"
@@ -18,7 +19,8 @@ static lw_problem *random_network(uint64_t seed, bool correlated)
 {
     double A[M * N] = {0}, y[M], sigma[M];
     for (int i = 0; i < M; i++) {
-        for (int k = 0; k < 3; k++) A[N * i + (i + 5 * k + i / N) % N] = next_random(&seed) + (k == 0 ? 2 : 0);
+        for (int k = 0; k < 3; k++)
+            A[N * i + (i + 5 * k + i / N) % N] = next_random(&seed) + (k == 0 ? 2 : 0);
         sigma[i] = 0.5 + 0.4 * next_random(&seed);
         y[i] = sigma[i] * 2 * next_random(&seed);
     }
@@ -87,7 +89,8 @@ START_TEST(test_definitions)
 }
 END_TEST
 
-/* Setting one reading aside: chi_square falls by w^2, its prediction error is minus the error that was estimated. */
+/* Setting one reading aside: chi_square falls by w^2, its prediction error is minus the error that was
+ * estimated. */
 START_TEST(test_deletion)
 {
     lw_problem *p = random_network(8, _i >= 2);
@@ -128,7 +131,8 @@ START_TEST(test_largest_shift)
         p->value[i] = before;
         int where = -1;
         for (int j = 0; j < N; j++)
-            if (fabs(b.estimate->x[j] - a.estimate->x[j]) > fabs(largest)) largest = b.estimate->x[j] - a.estimate->x[where = j];
+            if (fabs(b.estimate->x[j] - a.estimate->x[j]) > fabs(largest))
+                largest = b.estimate->x[j] - a.estimate->x[where = j];
         ck_assert_int_eq(a.certainty->shifted_parameter[i], where);
         ck_close(a.certainty->largest_shift[i], largest, 1e-9);
         adjusted_clear(&b);
@@ -138,7 +142,8 @@ START_TEST(test_largest_shift)
 }
 END_TEST
 
-/* Readings 0 and 1 alone tie unknown 0 to the rest: inseparable; reading 2 alone holds unknown 1: no redundancy. */
+/* Readings 0 and 1 alone tie unknown 0 to the rest: inseparable; reading 2 alone holds unknown 1: no
+ * redundancy. */
 START_TEST(test_inseparable_and_uncontrolled)
 {
     double B[7 * 4] = {0};
@@ -180,8 +185,8 @@ START_TEST(test_zero_residuals)
 }
 END_TEST
 
-/* 1000 networks: false alarms at rate alpha, and an error of the detectable size found with the power. Noise is put on the
- * readings of one network; the limits are three standard errors of a binomial count. */
+/* 1000 networks: false alarms at rate alpha, and an error of the detectable size found with the power. Noise
+ * is put on the readings of one network; the limits are three standard errors of a binomial count. */
 START_TEST(test_false_alarms_and_power)
 {
     const int trials = 1000;

@@ -8,7 +8,8 @@
 
 #include <math.h>
 
-/* A'A of a random m x n matrix of k entries a row near each other, plus `shift` I; condition grows as shift falls. */
+/* A'A of a random m x n matrix of k entries a row near each other, plus `shift` I; condition grows as shift
+ * falls. */
 static lw_sparse *random_normal(int64_t n, int64_t reach, double shift, uint64_t seed)
 {
     int64_t m = 3 * n, k = 4, count = m * k + n;
@@ -28,7 +29,8 @@ static lw_sparse *random_normal(int64_t n, int64_t reach, double shift, uint64_t
         column[m * k + j] = (int32_t)j;
         value[m * k + j] = sqrt(shift);
     }
-    ck_assert_int_eq(lw_sparse_from_triplets(m + n, n, count, row, column, value, NULL, 1, &A, NULL, &error), LW_OK);
+    ck_assert_int_eq(lw_sparse_from_triplets(m + n, n, count, row, column, value, NULL, 1, &A, NULL, &error),
+                     LW_OK);
     ck_assert_int_eq(lw_sparse_gram(A, NULL, &N, &error), LW_OK);
     lw_sparse_free(A);
     lw_free(row);
@@ -41,7 +43,7 @@ static double *dense_inverse(const lw_sparse *N)
 {
     int64_t n = N->columns, defect = 0;
     lw_error error = {0};
-    double *D = LW_NEW_ARRAY(double, n * n);
+    double *D = LW_NEW_ARRAY(double, n *n);
     lw_sparse_to_dense(N, D);
     ck_assert_int_eq(lw_dense_cholesky(n, D, &defect, &error), LW_OK);
     ck_assert_int_eq(lw_dense_cholesky_invert(n, D, &error), LW_OK);

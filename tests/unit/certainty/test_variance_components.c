@@ -39,7 +39,8 @@ static lw_variance_components *estimate(const lw_problem *p, const char *engine)
     lw_error error = {0};
     lw_system_options system_options = {0};
     lw_solve_options solve_options = {.engine = engine};
-    lw_status status = lw_variance_components_estimate(p, &system_options, &solve_options, 0, NULL, &c, &error);
+    lw_status status =
+        lw_variance_components_estimate(p, &system_options, &solve_options, 0, NULL, &c, &error);
     ck_assert_msg(status == LW_OK, "%d %s", status, error.text);
     return c;
 }
@@ -54,7 +55,8 @@ START_TEST(test_two_groups)
     for (int g = 0; g < 2; g++) {
         double truth = factor[g] * factor[g];
         ck_assert_double_le(fabs(c->groups[g].component - truth), 3 * c->groups[g].sigma);
-        double least = c->groups[g].component * sqrt(2 / c->groups[g].redundancy); /* if the other group were known */
+        double least =
+            c->groups[g].component * sqrt(2 / c->groups[g].redundancy); /* if the other group were known */
         ck_assert(c->groups[g].sigma >= least && c->groups[g].sigma < 1.5 * least);
         ck_close(c->groups[g].scale * c->groups[g].scale, c->groups[g].component, 1e-14);
     }

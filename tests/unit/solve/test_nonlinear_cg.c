@@ -24,7 +24,8 @@ static double derivative(const double *x, const double *d, double alpha)
     return 200 * u * du - 2 * (1 - x[0] - alpha * d[0]) * d[0];
 }
 
-/* Smallest positive stationary point: the first change of sign on a fine grid of growing steps, then bisection. */
+/* Smallest positive stationary point: the first change of sign on a fine grid of growing steps, then
+ * bisection. */
 static double exact_search(void *state, const double *x, const double *d, double slope)
 {
     (void)state;
@@ -64,8 +65,8 @@ START_TEST(test_five_exact_steps)
         double x[2] = {-1.2, 1};
         lw_cg_result result;
         lw_error error = {0};
-        lw_cg_options options = {.rule = _i ? LW_FLETCHER_REEVES : LW_POLAK_RIBIERE_PLUS, .steps = step,
-                                 .search = exact_search};
+        lw_cg_options options = {
+            .rule = _i ? LW_FLETCHER_REEVES : LW_POLAK_RIBIERE_PLUS, .steps = step, .search = exact_search};
         ck_assert_int_eq(lw_nonlinear_cg(&objective, &options, x, &result, NULL, &error), LW_NOT_CONVERGED);
         ck_assert_double_eq_tol(x[0], expected[step - 1][0], 1e-11);
         ck_assert_double_eq_tol(x[1], expected[step - 1][1], 1e-11);
@@ -116,7 +117,9 @@ START_TEST(test_quadratic_in_three_steps)
 {
     double x[6] = {7, -3, 2, 9, -1, 4};
     lw_objective objective = {.n = 6, .value = bowl};
-    lw_cg_options options = {.rule = _i ? LW_FLETCHER_REEVES : LW_POLAK_RIBIERE_PLUS, .tolerance = 1e-11, .steps = 3,
+    lw_cg_options options = {.rule = _i ? LW_FLETCHER_REEVES : LW_POLAK_RIBIERE_PLUS,
+                             .tolerance = 1e-11,
+                             .steps = 3,
                              .search = bowl_search};
     lw_cg_result result;
     lw_error error = {0};

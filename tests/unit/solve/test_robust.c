@@ -7,13 +7,16 @@
 
 #include <math.h>
 
-/* Brownlee, Statistical Theory and Methodology in Science and Engineering, 1960, pp. 491-500 (stack loss data of R). Huber
- * with constant 1.345 and scale median |r| / 0.6745 converged to 1e-14 (MASS::rlm, and an independent iteration to 7e-14);
- * least absolute deviations as exact fractions (linear programming; quantreg). */
-static const double stack[21][4] = {
-    {80, 27, 89, 42}, {80, 27, 88, 37}, {75, 25, 90, 37}, {62, 24, 87, 28}, {62, 22, 87, 18}, {62, 23, 87, 18}, {62, 24, 93, 19},
-    {62, 24, 93, 20}, {58, 23, 87, 15}, {58, 18, 80, 14}, {58, 18, 89, 14}, {58, 17, 88, 13}, {58, 18, 82, 11}, {58, 19, 93, 12},
-    {50, 18, 89, 8},  {50, 18, 86, 7},  {50, 19, 72, 8},  {50, 19, 79, 8},  {50, 20, 80, 9},  {56, 20, 82, 15}, {70, 20, 91, 15}};
+/* Brownlee, Statistical Theory and Methodology in Science and Engineering, 1960, pp. 491-500 (stack loss data
+ * of R). Huber with constant 1.345 and scale median |r| / 0.6745 converged to 1e-14 (MASS::rlm, and an
+ * independent iteration to 7e-14); least absolute deviations as exact fractions (linear programming;
+ * quantreg). */
+static const double stack[21][4] = {{80, 27, 89, 42}, {80, 27, 88, 37}, {75, 25, 90, 37}, {62, 24, 87, 28},
+                                    {62, 22, 87, 18}, {62, 23, 87, 18}, {62, 24, 93, 19}, {62, 24, 93, 20},
+                                    {58, 23, 87, 15}, {58, 18, 80, 14}, {58, 18, 89, 14}, {58, 17, 88, 13},
+                                    {58, 18, 82, 11}, {58, 19, 93, 12}, {50, 18, 89, 8},  {50, 18, 86, 7},
+                                    {50, 19, 72, 8},  {50, 19, 79, 8},  {50, 20, 80, 9},  {56, 20, 82, 15},
+                                    {70, 20, 91, 15}};
 
 static lw_problem *stack_problem(const double *sigma)
 {
@@ -32,17 +35,20 @@ static lw_robust *fit(const lw_problem *problem, const char *engine, double lamb
     lw_error error = {0};
     lw_solve_options solve_options = {.engine = engine};
     lw_system_options system_options = {0};
-    lw_status status = lw_robust_solve(problem, &system_options, lambda, &solve_options, &options, NULL, &robust, &error);
+    lw_status status =
+        lw_robust_solve(problem, &system_options, lambda, &solve_options, &options, NULL, &robust, &error);
     ck_assert_msg(status == LW_OK, "%d %s", status, error.text);
     return robust;
 }
 
 START_TEST(test_stack_loss_huber)
 {
-    static const double expected[] = {-41.0264853732951, 0.829385770253855, 0.926059415548608, -0.127846317965416};
+    static const double expected[] = {-41.0264853732951, 0.829385770253855, 0.926059415548608,
+                                      -0.127846317965416};
     lw_problem *p = stack_problem(NULL);
     lw_robust *r = fit(p, _i ? "cholesky" : "dense", 0, (lw_robust_options){.misfit = LW_MISFIT_HUBER});
-    for (int j = 0; j < 4; j++) ck_assert_double_eq_tol(r->estimate->x[j], expected[j], 2e-13 * fabs(expected[0]));
+    for (int j = 0; j < 4; j++)
+        ck_assert_double_eq_tol(r->estimate->x[j], expected[j], 2e-13 * fabs(expected[0]));
     ck_assert_double_eq_tol(r->scale, 2.44048904599282, 1e-12);
     ck_assert_double_eq_tol(r->weight[3], 0.504855924897604, 1e-12);
     ck_assert_double_eq_tol(r->weight[2], 0.785796612529849, 1e-12);
@@ -57,9 +63,11 @@ START_TEST(test_stack_loss_l1)
 {
     static const double expected[] = {-13693.0 / 345, 287.0 / 345, 66.0 / 115, -7.0 / 115};
     lw_problem *p = stack_problem(NULL);
-    lw_robust_options options = {.misfit = LW_MISFIT_L1, .way = _i == 2 ? LW_ROBUST_GRADIENTS : LW_ROBUST_REWEIGHTED};
+    lw_robust_options options = {.misfit = LW_MISFIT_L1,
+                                 .way = _i == 2 ? LW_ROBUST_GRADIENTS : LW_ROBUST_REWEIGHTED};
     lw_robust *r = fit(p, _i ? "cholesky" : "dense", 0, options);
-    for (int j = 0; j < 4; j++) ck_assert_double_eq_tol(r->estimate->x[j], expected[j], 1e-14 * fabs(expected[j]));
+    for (int j = 0; j < 4; j++)
+        ck_assert_double_eq_tol(r->estimate->x[j], expected[j], 1e-14 * fabs(expected[j]));
     ck_assert_double_eq_tol(r->objective / 2, 14518.0 / 345, 1e-12);
     ck_assert(r->vertex);
     for (int i = 0; i < 21; i++) { /* rows 2, 8, 16 and 18 are met exactly */
@@ -92,7 +100,8 @@ static lw_problem *contaminated(void)
 START_TEST(test_ways_agree)
 {
     lw_problem *p = _i % 2 ? contaminated() : stack_problem(NULL);
-    lw_robust_options options = {.misfit = LW_MISFIT_HUBER, .scale_stated = _i % 2 == 1, .way = LW_ROBUST_REWEIGHTED};
+    lw_robust_options options = {
+        .misfit = LW_MISFIT_HUBER, .scale_stated = _i % 2 == 1, .way = LW_ROBUST_REWEIGHTED};
     double lambda = _i >= 2 ? 0.7 : 0;
     lw_robust *a = fit(p, "dense", lambda, options);
     options.way = LW_ROBUST_GRADIENTS;
