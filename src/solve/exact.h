@@ -50,9 +50,9 @@ lw_decimal lw_exact_chi_square(const lw_exact *exact, const lw_exact_state *stat
  *      contraction = n_1 / n_0       what one step leaves of the error: that of the unrefined solution
  *      last        = n_last / ||z||  stop at 1e-25, or where corrections no longer shrink
  *
- *  (z below 2^-46 of the right-hand side counts as that much.) LW_OK; LW_NOT_CONVERGED when contraction > 0.1,
- *  or the last is above 1e-15: the double result is not sure to its last digits. most = 0: one solve, nothing
- *  refined, contraction NaN. */
+ *  (z below 2^-46 of the right-hand side counts as that much.) LW_OK; LW_NOT_CONVERGED when contraction >
+ * 0.1, or the last is above 1e-15: the double result is not sure to its last digits. most = 0: one solve,
+ * nothing refined, contraction NaN. */
 struct lw_decomposition;
 typedef struct lw_refinement {
     int64_t steps;            /**< corrections after the first solve */

@@ -39,9 +39,11 @@ int64_t lw_standard_form_undamped(const lw_standard_form *form);
 /** Time of factoring L'L, for the bench. */
 double lw_standard_form_factor_seconds(const lw_standard_form *form);
 /** z (columns x k) from w (width x k). */
-lw_status lw_standard_form_back(lw_standard_form *form, int64_t k, const double *w, double *z, lw_error *error);
+lw_status lw_standard_form_back(lw_standard_form *form, int64_t k, const double *w, double *z,
+                                lw_error *error);
 /** z = L^# w only (no null-space part): square root of the prior covariance, for samples and posterior
  *  variances. */
-lw_status lw_standard_form_root(lw_standard_form *form, int64_t k, const double *w, double *z, lw_error *error);
+lw_status lw_standard_form_root(lw_standard_form *form, int64_t k, const double *w, double *z,
+                                lw_error *error);
 
 #endif

@@ -3,6 +3,7 @@
 #include "check_problem.h"
 
 #include "core/memory.h"
+#include "problem/nearest.h"
 #include "problem/penalty.h"
 
 #include <math.h>
@@ -307,6 +308,36 @@ START_TEST(says_what_is_missing)
 }
 END_TEST
 
+/* Points on a coarse lattice, so that many distances are equal. */
+START_TEST(neighbours_are_the_nearest)
+{
+    double x[150], y[150], *place[] = {x, y};
+    lw_neighbour found[LW_NEAREST_MOST], all[150 * 9];
+    lw_nearest *tree = NULL;
+    uint64_t state = 2;
+    for (int i = 0; i < 150; i++) {
+        x[i] = rint(8 * next_random(&state));
+        y[i] = rint(8 * next_random(&state)) + i / 1e3;
+    }
+    ck_assert_int_eq(lw_nearest_new(2, 150, place, &tree, NULL), LW_OK);
+    lw_nearest_find_all(tree, 9, NULL, all);
+    for (int i = 0; i < 150; i++) {
+        ck_assert_int_eq(lw_nearest_find(tree, i, 9, found), 9);
+        for (int k = 0; k < 9; k++) {
+            int closer = 0;
+            for (int j = 0; j < 150; j++) {
+                double square = (x[j] - x[i]) * (x[j] - x[i]) + (y[j] - y[i]) * (y[j] - y[i]);
+                closer += j != i && square < found[k].square;
+            }
+            ck_assert_int_le(closer, k);
+            ck_assert_int_eq(found[k].point, all[9 * i + k].point);
+        }
+    }
+    ck_assert_int_eq(lw_nearest_find(tree, 0, 99, found), LW_NEAREST_MOST < 149 ? LW_NEAREST_MOST : 149);
+    lw_nearest_free(tree);
+}
+END_TEST
+
 Suite *suite_penalty(void)
 {
     Suite *suite = suite_create("penalty");
@@ -321,6 +352,7 @@ Suite *suite_penalty(void)
     tcase_add_test(tcase, order_of_points_does_not_matter);
     tcase_add_test(tcase, scattered_rows_are_the_laplacian);
     tcase_add_test(tcase, says_what_is_missing);
+    tcase_add_test(tcase, neighbours_are_the_nearest);
     suite_add_tcase(suite, tcase);
     return suite;
 }

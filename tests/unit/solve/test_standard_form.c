@@ -336,6 +336,37 @@ START_TEST(undamped_is_left_as_it_is)
 }
 END_TEST
 
+static bool refuse(void *state)
+{
+    int64_t *left = state;
+    return (*left)-- == 0;
+}
+
+START_TEST(failing_allocations_are_told)
+{
+    int64_t n;
+    lw_problem *problem = patchy_problem(70, &n);
+    for (lw_penalty_kind kind = LW_PREFER_SMALLEST; kind <= LW_PREFER_SMOOTHEST; kind++) {
+        lw_system *system = system_with(problem, kind, 0);
+        for (int64_t at = 0, done = 0; !done; at++) {
+            lw_standard_form *form = NULL;
+            lw_error error = {0};
+            int64_t left = at;
+            lw_memory_set_gate(refuse, &left);
+            lw_status status = lw_standard_form_new(system, 1, NULL, NULL, &form, &error);
+            lw_memory_set_gate(NULL, NULL);
+            done = left >= 0;
+            ck_assert_int_eq(status, done ? LW_OK : LW_NO_MEMORY);
+            if (!done) ck_assert_ptr_null(form);
+            lw_standard_form_free(form);
+            ck_assert_int_lt(at, 3000);
+        }
+        lw_system_free(system);
+    }
+    lw_problem_free(problem);
+}
+END_TEST
+
 Suite *suite_standard_form(void)
 {
     Suite *suite = suite_create("standard form");
@@ -346,6 +377,7 @@ Suite *suite_standard_form(void)
     tcase_add_test(tcase, scattered_points_keep_their_planes);
     tcase_add_test(tcase, names_what_the_data_leave_open);
     tcase_add_test(tcase, undamped_is_left_as_it_is);
+    tcase_add_test(tcase, failing_allocations_are_told);
     suite_add_tcase(suite, tcase);
     return suite;
 }
