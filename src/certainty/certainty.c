@@ -105,8 +105,8 @@ static lw_status read_inverse(lw_certainty_work *w, bool last, lw_error *error)
     return status;
 }
 
-/* Rank: of the estimate; of our own factor (which exists only where it is full). Effective parameters: of the
- * estimate, else the trace of the resolution. */
+/* Rank: of the estimate; of our own factor (which exists only where it is full). Effective parameters: of
+ * the estimate, else the trace of the resolution. */
 static void make_test(lw_certainty_work *w)
 {
     const lw_point *point = &w->estimate->point;

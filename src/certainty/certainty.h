@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /** How far each number may be trusted: per parameter, per observation, global. By the contract of the
- * objective
+ *  objective
  *
  *      minimise (A x - b)' P (A x - b) + lambda^2 ||L (x - x0)||^2
  *
@@ -15,17 +15,20 @@
  *      predicted_sigma  sqrt(factor (A Q A')_ii), unit of the reading
  *      redundancy       r_i = (Q_vv P)_ii, 0 .. 1 when uncorrelated; NaN for a reading set aside
  *      standardized     w_i = (P e)_i / sqrt((P Q_vv P)_ii), with the sign of e; divided by s0 (tau) when
- * estimated detectable       delta0 sqrt(factor) / sqrt((P Q_vv P)_ii), unit of the reading bias_ratio delta0
- * sqrt((1 - s_i) / s_i), s_i = (P Q_vv P)_ii / P_ii; s_i = r_i when uncorrelated error_estimate   -(P e)_i /
- * (P Q_vv P)_ii: size of a single error in the reading, sign of the reading's error largest_shift    the
- * entry of Q A' P e_i detectable_i of largest size, signed; shifted_parameter says whose (in large systems
- * searched among the parameters of the reading's own equations, see shift.h) A reading that is set aside has
- * the statistics of its prediction error e_i with variance sigma_i^2 + (A Q A')_ii: standardized = e_i /
- * sqrt(..), error_estimate = -e_i. The flags no_redundancy and weak, and all statistics, go by s_i: below
- * 1e-6 there are none. Robust weights (row factors) count as part of P: what is reported after them takes the
- * weights as given and is an approximation (see solve/robust.h). Sources: Baarda, A testing procedure for use
- * in geodetic networks, Delft 1968; Pope, NOAA TR NOS 65 NGS 1, 1976; Teunissen, Testing Theory, 2000; JCGM
- * 100:2008. */
+ *                       estimated
+ *      detectable       delta0 sqrt(factor) / sqrt((P Q_vv P)_ii), unit of the reading
+ *      bias_ratio       delta0 sqrt((1 - s_i) / s_i), s_i = (P Q_vv P)_ii / P_ii; s_i = r_i when uncorrelated
+ *      error_estimate   -(P e)_i / (P Q_vv P)_ii: size of a single error in the reading, sign of the
+ *                       reading's error
+ *      largest_shift    the entry of Q A' P e_i detectable_i of largest size, signed; shifted_parameter
+ *                       says whose (in large systems searched among the parameters of the reading's own
+ *                       equations, see shift.h)
+ *  A reading that is set aside has the statistics of its prediction error e_i with variance sigma_i^2 + (A
+ *  Q A')_ii: standardized = e_i / sqrt(..), error_estimate = -e_i. The flags no_redundancy and weak, and
+ *  all statistics, go by s_i: below 1e-6 there are none. Robust weights (row factors) count as part of P:
+ *  what is reported after them takes the weights as given and is an approximation (see solve/robust.h).
+ *  Sources: Baarda, A testing procedure for use in geodetic networks, Delft 1968; Pope, NOAA TR NOS 65 NGS
+ *  1, 1976; Teunissen, Testing Theory, 2000; JCGM 100:2008. */
 #ifndef LW_CERTAINTY_CERTAINTY_H
 #define LW_CERTAINTY_CERTAINTY_H
 
@@ -75,12 +78,12 @@ typedef struct lw_certainty_options {
 
 typedef struct lw_global_test {
     double chi_square;
-    double degrees_of_freedom; /**< observations used + weighted priors + conditions - rank; m - effective
-                                  parameters when damped */
-    double variance_factor;    /**< s0^2, NaN without redundancy */
-    double probability;        /**< two-sided; NaN where it does not hold (damped, unit weights) */
-    double lower, upper;       /**< acceptance range of chi_square at `confidence` */
-    bool applies;              /**< sigma stated, undamped or posterior, redundancy > 0 */
+    /** observations used + weighted priors + conditions - rank; m - effective parameters when damped */
+    double degrees_of_freedom;
+    double variance_factor; /**< s0^2, NaN without redundancy */
+    double probability;     /**< two-sided; NaN where it does not hold (damped, unit weights) */
+    double lower, upper;    /**< acceptance range of chi_square at `confidence` */
+    bool applies;           /**< sigma stated, undamped or posterior, redundancy > 0 */
     bool rejected, too_high;
     double alpha;
 } lw_global_test;
@@ -101,9 +104,9 @@ typedef struct lw_covariance_entry {
 } lw_covariance_entry;
 
 /** Error ellipse of a point, or relative between two points that an observation joins, from parameters with
- * `point` and `axis` (east or x, north or y, up or z). In three dimensions semi_major, semi_minor and azimuth
- * are the shadow of the ellipsoid on the horizontal plane and vertical its half height, all with the
- * multiplier of three dimensions. */
+ *  `point` and `axis` (east or x, north or y, up or z). In three dimensions semi_major, semi_minor and
+ *  azimuth are the shadow of the ellipsoid on the horizontal plane and vertical its half height, all with
+ *  the multiplier of three dimensions. */
 typedef struct lw_ellipse {
     int32_t point, to_point;       /**< numbers in problem->point_names; to_point -1: absolute */
     int dimension;                 /**< 2 or 3 */
@@ -148,7 +151,7 @@ typedef struct lw_certainty {
 void lw_certainty_free(lw_certainty *certainty);
 
 /** All of the above from a decomposition and its estimate; decomposition may be consumed by the selected
- * inverse (hand_over) when `last` is true. Errors: LW_NO_MEMORY, LW_SYSTEM. */
+ *  inverse (hand_over) when `last` is true. Errors: LW_NO_MEMORY, LW_SYSTEM. */
 lw_status lw_certainty_make(lw_decomposition *decomposition, const lw_estimate *estimate,
                             const lw_certainty_options *options, bool last, const lw_watch *watch,
                             lw_certainty **out, lw_error *error);

@@ -1,14 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/** Test statistics of all rows after some were set aside, from one decomposition. With y = P e and T = P Q_vv
- * P of the full problem, setting row i aside gives
+/** Test statistics of all rows after some were set aside, from one decomposition. With y = P e and T = P
+ *  Q_vv P of the full problem, setting row i aside gives
  *
  *      c = T e_i / sqrt(T_ii),  y <- y - c y_i / sqrt(T_ii),  T_jj <- T_jj - c_j^2,
  *      chi_square <- chi_square - y_i^2 / T_ii
  *
  *  one solve and one pass a row; later columns are reduced by the earlier c as in a Cholesky factorization.
- * Back again: with G = T between the rows K that are aside, d = G^-1 y_K are their errors and d_k /
- * sqrt((G^-1)_kk) is the statistic that row k has when it alone comes back. Source: Kok, On data snooping and
- * multiple outlier testing, NOAA TR NOS NGS 30, 1984. */
+ *  Back again: with G = T between the rows K that are aside, d = G^-1 y_K are their errors and d_k /
+ *  sqrt((G^-1)_kk) is the statistic that row k has when it alone comes back.
+ *  Source: Kok, On data snooping and multiple outlier testing, NOAA TR NOS NGS 30, 1984. */
 #ifndef LW_CERTAINTY_DEFLATION_H
 #define LW_CERTAINTY_DEFLATION_H
 

@@ -3,8 +3,8 @@
  *
  *      row i:  sum_k a[k] z[column[k]],  unit of the reading; held parameters left out
  *
- *  with the weight matrix P of a row or of its block of correlated readings. A row factor w divides sigma; a
- * reading that is set aside (w = 0) keeps its equation and its sigma, and has no weight. */
+ *  with the weight matrix P of a row or of its block of correlated readings. A row factor w divides sigma;
+ *  a reading that is set aside (w = 0) keeps its equation and its sigma, and has no weight. */
 #ifndef LW_CERTAINTY_EQUATION_H
 #define LW_CERTAINTY_EQUATION_H
 
@@ -31,7 +31,7 @@ double lw_equation_factor(const lw_equations *equations, int64_t i);
 int64_t lw_equation_block(const lw_equations *equations, int64_t i);
 
 /** Members of block k that are in use, and P = (Sigma with its diagonal divided by w_i^2)^-1 (size x size,
- * column-major); arrays owned by the caller. Errors: LW_NO_MEMORY, LW_SYSTEM. */
+ *  column-major); arrays owned by the caller. Errors: LW_NO_MEMORY, LW_SYSTEM. */
 lw_status lw_equation_weights(const lw_equations *equations, int64_t block, int64_t *size, int64_t **member,
                               double **weights, lw_error *error);
 

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/** The global test of the adjustment: is chi_square what the stated sigmas let expect? Two-sided at alpha = 1
- * - confidence.
+/** The global test of the adjustment: is chi_square what the stated sigmas let expect? Two-sided at alpha =
+ *  1 - confidence.
  *
  *      degrees of freedom = observations used + weighted priors + conditions - rank     undamped
  *                         = observations used - effective parameters                    damped; no test then

@@ -21,7 +21,7 @@ static lw_status sample(lw_certainty_work *w, lw_error *error)
 #define SPARSE_COST 5e6
 
 /* Variances to twice the digits where the engine refines and the cost is small; else w->refined stays NULL.
- */
+ * */
 static lw_status refine(lw_certainty_work *w, lw_error *error)
 {
     double worst = 0;

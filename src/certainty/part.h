@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /** What the parts of lw_certainty_make share. Order of the work: all that needs columns of Q, then the
- * inversion (which may overwrite the factor), then all that needs entries, then the global test, and last the
- * variance factor. */
+ *  inversion (which may overwrite the factor), then all that needs entries, then the global test, and last
+ *  the variance factor. */
 #ifndef LW_CERTAINTY_PART_H
 #define LW_CERTAINTY_PART_H
 
@@ -31,7 +31,7 @@ typedef struct lw_certainty_work {
 } lw_certainty_work;
 
 /** sigma, kind, intervals, covariance: first what needs columns, later what needs entries, last the factor.
- */
+ *  */
 lw_status lw_parameter_columns(lw_certainty_work *work, lw_error *error);
 lw_status lw_parameter_entries(lw_certainty_work *work, lw_error *error);
 void lw_parameter_finish(lw_certainty_work *work);
@@ -50,8 +50,8 @@ lw_status lw_group_factors_make(lw_certainty_work *work, lw_error *error);
 lw_status lw_ellipse_columns(lw_certainty_work *work, lw_error *error);
 lw_status lw_ellipses_make(lw_certainty_work *work, lw_error *error);
 
-/** Semi-axes and azimuth (degrees clockwise from the second axis) of the standard ellipse of [xx xy; xy yy].
- */
+/** Semi-axes and azimuth (degrees clockwise from the second axis) of the standard ellipse of [xx xy; xy
+ *  yy]. */
 void lw_ellipse_axes(double xx, double xy, double yy, double *semi_major, double *semi_minor,
                      double *azimuth);
 

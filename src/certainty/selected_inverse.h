@@ -8,9 +8,10 @@
  *      Z11 = (L11 L11')^-1 - Y' Z21
  *
  *  Z22, between the rows below the diagonal block, is gathered from the supernodes that were done before
- * (from the last to the first). Cost: about that of the numeric factorization; memory: the factor's values
- * are overwritten (in place) or copied once, and one dense block of the widest supernode. Sources: Takahashi,
- * Fagan & Chin, Proc. 8th PICA Conference, 1973; Erisman & Tinney, Comm. ACM 18(3):177-179, 1975. */
+ *  (from the last to the first). Cost: about that of the numeric factorization; memory: the factor's values
+ *  are overwritten (in place) or copied once, and one dense block of the widest supernode.
+ *  Sources: Takahashi, Fagan & Chin, Proc. 8th PICA Conference, 1973; Erisman & Tinney, Comm. ACM
+ *  18(3):177-179, 1975. */
 #ifndef LW_CERTAINTY_SELECTED_INVERSE_H
 #define LW_CERTAINTY_SELECTED_INVERSE_H
 
@@ -30,7 +31,7 @@ typedef struct lw_selected_inverse {
 /** The pattern alone; nothing is inverted. The view's arrays are borrowed. */
 lw_status lw_selected_inverse_new(const lw_factor_view *view, lw_selected_inverse **out, lw_error *error);
 /** Inverts. in_place: view->value (of the same factor as before) is overwritten, and the factor can do
- * nothing else afterwards. Errors: LW_NO_MEMORY, LW_SYSTEM; LW_INTERRUPTED when cancelled. */
+ *  nothing else afterwards. Errors: LW_NO_MEMORY, LW_SYSTEM; LW_INTERRUPTED when cancelled. */
 lw_status lw_selected_inverse_run(lw_selected_inverse *inverse, const lw_factor_view *view, bool in_place,
                                   const lw_watch *watch, lw_error *error);
 void lw_selected_inverse_free(lw_selected_inverse *inverse);

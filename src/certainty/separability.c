@@ -9,8 +9,8 @@
 
 #define TRIALS LW_SEPARABILITY_TRIALS
 #define STREAM 71
-/* sqrt(2e-9) is one standard deviation of a difference at the limit of 1 - |rho|; 4.5 of them are looked at.
- */
+/* sqrt(2e-9) is one standard deviation of a difference at the limit of 1 - |rho|; 4.5 of them are looked
+ * at. */
 #define WINDOW 2e-4
 #define LIMIT 1e-9
 

@@ -4,8 +4,8 @@
  *      Q A' P e_i     (for one unit of error; certainty multiplies by the smallest detectable error)
  *
  *  Searched over all parameters while that is cheap (LW_SHIFT_WORK); in larger problems over the parameters
- * of the reading's own equation (of its block's equations, when correlated), where local errors have their
- * largest effect. */
+ *  of the reading's own equation (of its block's equations, when correlated), where local errors have their
+ *  largest effect. */
 #ifndef LW_CERTAINTY_SHIFT_H
 #define LW_CERTAINTY_SHIFT_H
 
@@ -13,7 +13,7 @@
 #include "certainty/equation.h"
 
 /** Multiplications that a search over all parameters may take; a constant, so that results do not depend on
- * the machine. */
+ *  the machine. */
 #define LW_SHIFT_WORK 1e9
 
 typedef struct lw_shift {
@@ -31,7 +31,7 @@ lw_status lw_shift_new(int64_t rows, lw_shift *out, lw_error *error);
 void lw_shift_take(const lw_system *system, int64_t i, int64_t count, const int64_t *column, const double *z,
                    lw_shift *out);
 /** Over the parameters of the own equations, from entries, for correlated rows (lw_redundancy_new does the
- * others). */
+ *  others). */
 lw_status lw_shift_of_blocks(const lw_equations *equations, const lw_cofactor *cofactor, lw_shift *out,
                              lw_error *error);
 void lw_shift_clear(lw_shift *shift);

@@ -5,9 +5,10 @@
  *      Q A'A Q           damped, data noise carried through (noise)
  *
  *  exactly from entries or columns of Q, or by samples: perturb data (and prior) by N(0, I), solve as a
- * block, and take the mean square; the relative error of a standard deviation from N samples is 1 / sqrt(2
- * N). Source: Tarantola, Inverse Problem Theory, SIAM 2005, 2.3; Bardsley, Solonen, Haario & Laine, SIAM J.
- * Sci. Comput. 36(4), 2014 (randomize, then optimize: exact for linear problems). */
+ *  block, and take the mean square; the relative error of a standard deviation from N samples is 1 / sqrt(2
+ *  N).
+ *  Source: Tarantola, Inverse Problem Theory, SIAM 2005, 2.3; Bardsley, Solonen, Haario & Laine, SIAM J.
+ *  Sci. Comput. 36(4), 2014 (randomize, then optimize: exact for linear problems). */
 #ifndef LW_CERTAINTY_SIGMA_H
 #define LW_CERTAINTY_SIGMA_H
 

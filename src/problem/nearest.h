@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** Nearest neighbours of points in one to three dimensions by a k-d tree (Bentley, Comm. ACM 18(9):509-517,
  *  1975). */
 #ifndef LW_PROBLEM_NEAREST_H

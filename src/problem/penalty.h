@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** The operator L of the penalty ||L (x - x0)||^2, in model units, rows x n parameters.
  *
  *  smallest   L = diag(damp_weight); n rows

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** What the files of the penalty share among themselves; formulas in penalty.h. */
 #ifndef LW_PROBLEM_PENALTY_PART_H
 #define LW_PROBLEM_PENALTY_PART_H

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** The view of a problem that engines see: free parameters only, reduced by x0, whitened, column-scaled.
  *
  *      x_j = x0_j + scale_j z_j   (free j; scale_j a power of two near 1 / ||whitened column j||)

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** What the files of lw_system share among themselves; see system.h. */
 #ifndef LW_PROBLEM_SYSTEM_PART_H
 #define LW_PROBLEM_SYSTEM_PART_H

@@ -14,35 +14,40 @@ function histogramSentence(h, counts) {
       `(normal: ${plain(total * 0.0027, 2)}). The line is what a normal distribution would give.`;
 }
 
-/** A histogram that can be redrawn: returns update(counts). h: {low, width, of, counts}; the first and last count are the
- *  residuals outside the bins. */
-function buildHistogram(parent, h, counts, titleFor) {
-  const fig = figure(parent, {title: titleFor()});
-  let frame = null, bars = null, normal = null, current = counts;
-  const bins = counts.length - 2;
-  fig.node.append(element(
-      "details", {}, element("summary", {}, "Numbers of this chart"), element("div", {class: "bins"})));
-  const details = fig.node.querySelector("details");
+/** The bins as a table under the figure, made when it is opened; returns what brings it up to date. */
+function tableOfBins(fig, h, counts) {
+  const holder = element("div");
+  const details = element("details", {}, element("summary", {}, "Numbers of this chart"), holder);
+  fig.node.append(details);
+  const edge = b => plain(h.low + (b - 1) * h.width);
   const tabulate = () => {
     if (!details.open) return;
-    const edges = b => h.low + (b - 1) * h.width;
-    details.querySelector(".bins").replaceChildren(tableOf({
-      count: counts.length,
+    const current = counts(), last = current.length - 1;
+    holder.replaceChildren(tableOf({
+      count: current.length,
       caption: "Residuals by bin",
       columns: [
         {
           name: "bin",
           unit: h.of,
           left: true,
-          text: b => b === 0 ? `below ${plain(h.low)}`
-              : b === counts.length - 1 ? `above ${plain(h.low + bins * h.width)}`
-                                        : `${plain(edges(b))} to ${plain(edges(b) + h.width)}`
+          text: b => b === 0 ? `below ${edge(1)}` : b === last ? `above ${edge(last)}` : `${edge(b)} to ${edge(b + 1)}`
         },
         {name: "residuals", text: b => whole(current[b]), sort: b => current[b]},
       ]
     }));
   };
   details.addEventListener("toggle", tabulate);
+  return tabulate;
+}
+
+/** A histogram that can be redrawn: returns update(counts). h: {low, width, of, counts}; the first and last count are the
+ *  residuals outside the bins. */
+function buildHistogram(parent, h, counts, titleFor) {
+  const fig = figure(parent, {title: titleFor()});
+  let frame = null, bars = null, normal = null, current = counts;
+  const bins = counts.length - 2;
+  const tabulate = tableOfBins(fig, h, () => current);
   const paint = () => {
     const total = d3.sum(current), expected = x => total * h.width * normalDensity(x);
     const shown = current.slice(1, -1);

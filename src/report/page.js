@@ -7,6 +7,7 @@ function buildPage() {
     buildExplorer();
     listenToKeys();
   }
+  buildProbe();
   buildTest();
   if (run.observations || run.binned) {
     buildResiduals();
@@ -15,7 +16,6 @@ function buildPage() {
   buildPlan();
   buildReliability();
   buildCover();
-  buildProbe();
   buildConvergence();
   buildInputs();
   buildCautions();

@@ -97,7 +97,7 @@ function planSentence(points, joins, flat, upright, exaggeration) {
 function exaggerationWords(factor) {
   if (run.plan.same_unit) return `drawn ${plain(factor, 3)} times too large`;
   return `1 ${run.units.ellipse || "unit"} of uncertainty is drawn as long as ${
-      factor >= 1 ? whole(factor) : plain(factor, 3)} units of the axes`;
+      factor >= 1 ? whole(factor) : plain(factor, 3)} units of the x axis`;
 }
 
 function confidenceWords(regions) {
@@ -158,7 +158,12 @@ function drawPlan(body, width, {points, joins, flat, upright, extent, reach, exa
         "Plan of the network: points, observations between them, and their error ellipses; the tables" +
             " give the numbers."
   });
-  const {g, x, y} = frame;
+  drawJoins(frame, joins);
+  drawRegions(frame, points, flat, upright, exaggeration * perUnit);
+  drawStations(frame, points, flat, upright);
+}
+
+function drawJoins({g, x, y}, joins) {
   const line = (selection, extra) => selection.attr("x1", j => x(j.a.x))
                                          .attr("y1", j => y(j.a.y))
                                          .attr("x2", j => x(j.b.x))
@@ -179,14 +184,18 @@ function drawPlan(body, width, {points, joins, flat, upright, extent, reach, exa
       .attr("class", "suspect-cross")
       .attr("d", "M-5,-5L5,5M-5,5L5,-5")
       .attr("transform", j => `translate(${(x(j.a.x) + x(j.b.x)) / 2},${(y(j.a.y) + y(j.b.y)) / 2})`);
+}
+
+/** perUnit: pixels for one unit of uncertainty. */
+function drawRegions({g, x, y, inner}, points, flat, upright, perUnit) {
   g.append("g")
       .selectAll("ellipse")
       .data(flat)
       .enter()
       .append("ellipse")
       .attr("class", "region")
-      .attr("rx", e => e.semi_minor * exaggeration * perUnit)
-      .attr("ry", e => e.semi_major * exaggeration * perUnit)
+      .attr("rx", e => e.semi_minor * perUnit)
+      .attr("ry", e => e.semi_major * perUnit)
       .attr("transform",
           e => `translate(${x(points[e.plan].x)},${y(points[e.plan].y)}) rotate(${
               e.azimuth === null ? 0 : e.azimuth})`);
@@ -199,12 +208,15 @@ function drawPlan(body, width, {points, joins, flat, upright, extent, reach, exa
         .attr("class", "region")
         .attr("d",
             e => {
-              const half = Math.max(1, e.vertical * exaggeration * perUnit);
+              const half = Math.max(1, e.vertical * perUnit);
               return `M-3,${- half}H3M0,${- half}V${half}M-3,${half}H3`;
             })
         .attr("transform", e => `translate(${x(points[e.plan].x)},${y(points[e.plan].y)})`);
   }
-  if (flat.length || upright.length) drawUncertaintyBar(g, frame.inner, exaggeration * perUnit);
+  if (flat.length || upright.length) drawUncertaintyBar(g, inner, perUnit);
+}
+
+function drawStations({g, x, y}, points, flat, upright) {
   const marks =
       g.append("g")
           .selectAll("path")

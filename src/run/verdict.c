@@ -35,12 +35,12 @@ static void number(lw_verdict *verdict, int k, const char *label, const char *fo
     va_end(list);
 }
 
-/* Row with the largest |value|, or -1. */
-static int64_t largest_row(const double *value, int64_t count)
+/* Place of the largest |value|, or -1; factor 0 (set aside) does not count. */
+static int64_t largest_row(const double *value, int64_t count, const double *factor)
 {
     int64_t best = -1;
     for (int64_t i = 0; value && i < count; i++)
-        if (!isnan(value[i]) && (best < 0 || fabs(value[i]) > fabs(value[best]))) best = i;
+        if (!isnan(value[i]) && !(factor && factor[i] == 0.0) && (best < 0 || fabs(value[i]) > fabs(value[best]))) best = i;
     return best;
 }
 
@@ -72,11 +72,11 @@ static void network_numbers(lw_verdict *verdict, const lw_run *run)
     else number(verdict, 0, "chi-square", "%.4g on %.0f degrees of freedom", certainty->test.chi_square, certainty->test.degrees_of_freedom);
     number(verdict, 1, "variance factor", "%.3g (%s in the sigmas)", certainty->test.variance_factor,
            run->variance_estimated ? "estimated, used" : "stated 1 used");
-    int64_t row = largest_row(certainty->standardized, certainty->rows);
+    int64_t row = largest_row(certainty->standardized, certainty->rows, run->system->row_factor);
     if (row >= 0)
         number(verdict, 2, run->variance_estimated ? "largest |tau|" : "largest |w|", "%.2f at %.60s (critical %.2f)",
                fabs(certainty->standardized[row]), lw_run_row_name(run, row, name), certainty->critical);
-    int64_t worst = largest_row(certainty->sigma, certainty->parameters);
+    int64_t worst = largest_row(certainty->sigma, certainty->parameters, NULL);
     if (worst >= 0) {
         lw_verdict_number(certainty->sigma[worst], 3, run->problem->parameter_unit, text, sizeof text);
         number(verdict, 3, "largest sigma", "%s at %.60s", text, lw_ids_name(run->problem->parameters, worst));
@@ -153,7 +153,7 @@ static void probe_numbers(lw_verdict *verdict, const lw_run *run)
         number(verdict, k, probe->pattern[k].name, "%.0f %% of the amplitude came back, correlation %.2f",
                100.0 * probe->pattern[k].overall_amplitude, probe->pattern[k].overall_correlation);
     if (probe->trials && k < LW_VERDICT_NUMBERS) {
-        int64_t worst = largest_row(probe->spread, probe->parameters);
+        int64_t worst = largest_row(probe->spread, probe->parameters, NULL);
         char text[96];
         lw_verdict_number(worst >= 0 ? probe->spread[worst] : LW_UNKNOWN, 3, run->problem->parameter_unit, text, sizeof text);
         number(verdict, k, probe->bootstrap ? "largest spread (bootstrap)" : "largest spread (noise)", "%s at %.60s, from %d trials", text,

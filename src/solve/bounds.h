@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** Least squares in a box:
  *
  *      minimise    q(z) = 1/2 ||A z - b||^2 + 1/2 lambda^2 ||L z||^2

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** What the files of the box-constrained solver share among themselves; see bounds.h.
  *
  *  K = [A; lambda L] diag(weight), z = weight t, r = K t - [b; 0], g = K'r. */

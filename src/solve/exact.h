@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** The exact residual of the unwhitened augmented system, in double-double, of the numbers as written: no
  *  whitening is made.
  *

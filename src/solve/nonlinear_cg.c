@@ -67,8 +67,8 @@ static double beyond(place a, place b)
     return fmin(fmax(alpha, 1.5 * b.alpha), 10 * b.alpha);
 }
 
-/* Strong Wolfe. low always satisfies the decrease and slopes down; high breaks the decrease or slopes up. The
- * decrease is asked for within the rounding of f. Returns 0 where none was found. */
+/* Strong Wolfe. low always satisfies the decrease and slopes down; high breaks the decrease or slopes up.
+ * The decrease is asked for within the rounding of f. Returns 0 where none was found. */
 static double wolfe(work *w, double f, double slope, double first)
 {
     place start = {0, f, slope}, low = start, high = start;

@@ -6,21 +6,22 @@
  *             = g_{k+1}'g_{k+1} / g_k'g_k                    Fletcher-Reeves
  *
  *  with a restart along -g where d would not descend (Fletcher-Reeves: also every max(n, 50) steps, for it
- * takes ever shorter steps after a bad direction). The line search satisfies the strong Wolfe conditions
+ *  takes ever shorter steps after a bad direction). The line search satisfies the strong Wolfe conditions
  *
  *      f(alpha) <= f(0) + decrease alpha f'(0),   |f'(alpha)| <= curvature |f'(0)|
  *
- *  Sources: Fletcher & Reeves, Computer J. 7:149-154, 1964; Polak & Ribiere, RIRO 3(16):35-43, 1969; Gilbert
- * & Nocedal, SIAM J. Optim. 2:21-42, 1992; Nocedal & Wright, Numerical Optimization, 2006, 3.5 and 5.2. */
+ *  Sources: Fletcher & Reeves, Computer J. 7:149-154, 1964; Polak & Ribiere, RIRO 3(16):35-43, 1969;
+ *  Gilbert & Nocedal, SIAM J. Optim. 2:21-42, 1992; Nocedal & Wright, Numerical Optimization, 2006, 3.5 and
+ *  5.2. */
 #ifndef LW_SOLVE_NONLINEAR_CG_H
 #define LW_SOLVE_NONLINEAR_CG_H
 
 #include "core/watch.h"
 #include "solve/decomposition.h"
 
-/** What is minimised. value gives f(x) and its gradient. aim and along may be NULL; with them a trial along a
- * line needs no full evaluation: aim(x, d) is called first, along(alpha, &slope) gives f(x + alpha d) and its
- * derivative. */
+/** What is minimised. value gives f(x) and its gradient. aim and along may be NULL; with them a trial along
+ *  a line needs no full evaluation: aim(x, d) is called first, along(alpha, &slope) gives f(x + alpha d)
+ *  and its derivative. */
 typedef struct lw_objective {
     int64_t n;
     void *state;
@@ -47,7 +48,7 @@ typedef struct lw_cg_result {
 } lw_cg_result;
 
 /** x (n): start, then the last point. LW_OK (tolerance, or rounding allows no more), LW_NOT_CONVERGED,
- * LW_INTERRUPTED. */
+ *  LW_INTERRUPTED. */
 lw_status lw_nonlinear_cg(const lw_objective *objective, const lw_cg_options *options, double *x,
                           lw_cg_result *out, const lw_watch *watch, lw_error *error);
 

@@ -109,8 +109,8 @@ static double change_of(const work *w)
     return size > 0 ? lw_norm(rows, difference, NULL) / size : 0;
 }
 
-/* Huber: weights, solution, scale in turn. Converged within the tolerance, or where rounding allows no more.
- */
+/* Huber: weights, solution, scale in turn. Converged within the tolerance, or where rounding allows no
+ * more. */
 static lw_status iterate_huber(work *w, double tolerance, int64_t most, lw_error *error)
 {
     lw_robust *out = w->out;

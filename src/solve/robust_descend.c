@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Robust misfits by nonlinear conjugate gradients on the operator: one product with A and one with A' a step,
- * trials along a line from r and A d alone. F(z) = sum phi_c(r_i) / c' + lambda^2 ||L z||^2 with r = A z - b;
- * c' = 1 (huber) or c (l1, whose c falls until it no longer matters). */
+/* Robust misfits by nonlinear conjugate gradients on the operator: one product with A and one with A' a
+ * step, trials along a line from r and A d alone. F(z) = sum phi_c(r_i) / c' + lambda^2 ||L z||^2 with r =
+ * A z - b; c' = 1 (huber) or c (l1, whose c falls until it no longer matters). */
 #include "core/memory.h"
 #include "matrix/vector.h"
 #include "solve/robust.h"

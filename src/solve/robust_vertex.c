@@ -4,9 +4,9 @@
  *
  *     A_B' y = -sum_{i not in B} s_i a_i,   optimal when |y_j| <= 1 for all j in B
  *
- * otherwise row j with the largest |y_j| leaves: z moves along d, A_B d = sign(y_j) e_j, down to the weighted
- * median of the places where other residuals change sign; the row that stands there enters. Source: Barrodale
- * & Roberts, SIAM J. Numer. Anal. 10:839-848, 1973. */
+ * otherwise row j with the largest |y_j| leaves: z moves along d, A_B d = sign(y_j) e_j, down to the
+ * weighted median of the places where other residuals change sign; the row that stands there enters.
+ * Source: Barrodale & Roberts, SIAM J. Numer. Anal. 10:839-848, 1973. */
 #include "core/memory.h"
 #include "matrix/dense.h"
 #include "solve/robust.h"

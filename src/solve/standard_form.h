@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** The damped problem in standard form, for iterative engines:
  *
  *      min ||A z - b||^2 + lambda^2 ||L z||^2   ->   min ||Abar w - bbar||^2 + lambda^2 ||w||^2

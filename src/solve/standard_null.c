@@ -13,16 +13,14 @@
 #define LARGEST_BLOCK 96
 
 /* Null vectors as they are found. */
-typedef struct catch
-{
+typedef struct haul {
     lw_penalty_null *null;
     int64_t room, entries, entry_room, most;
     int64_t *start;
     int32_t *index;
     double *value;
     int full; /* a component's whole trial space was null: there may be more */
-}
-catch;
+} haul;
 
 void lw_penalty_null_clear(lw_penalty_null *null)
 {
@@ -31,7 +29,7 @@ void lw_penalty_null_clear(lw_penalty_null *null)
     *null = (lw_penalty_null){0};
 }
 
-static lw_status make_room(catch *got, int64_t vectors, int64_t entries, lw_error *error)
+static lw_status make_room(haul *got, int64_t vectors, int64_t entries, lw_error *error)
 {
     if (got->null->defect + vectors > got->most) return LW_QUALIFIED;
     if (got->null->defect + vectors + 1 > got->room) {
@@ -58,7 +56,7 @@ static lw_status make_room(catch *got, int64_t vectors, int64_t entries, lw_erro
 
 /* Takes k null vectors N (size x k) of a component and pins k of its columns, where N' has its largest
  * pivots. */
-static lw_status take_vectors(catch *got, int64_t size, const int64_t *column, int64_t k, const double *N,
+static lw_status take_vectors(haul *got, int64_t size, const int64_t *column, int64_t k, const double *N,
                               lw_error *error)
 {
     lw_status status = make_room(got, k, k * size, error);
@@ -146,7 +144,7 @@ static lw_status small_svd(const lw_penalty_graph *graph, int64_t c, int64_t row
 }
 
 /* Null vectors of component c in the span of its `rank` orthonormal columns of X, Y = L X. */
-static lw_status reduce_component(catch *got, const lw_sparse *L, const lw_penalty_graph *graph, int64_t c,
+static lw_status reduce_component(haul *got, const lw_sparse *L, const lw_penalty_graph *graph, int64_t c,
                                   int rank, int q, const double *X, const double *Y, lw_error *error)
 {
     const int64_t *column = graph->column + graph->column_start[c];
@@ -167,7 +165,7 @@ static lw_status reduce_component(catch *got, const lw_sparse *L, const lw_penal
     return status;
 }
 
-static lw_status take_units(catch *got, const lw_penalty_graph *graph, lw_error *error)
+static lw_status take_units(haul *got, const lw_penalty_graph *graph, lw_error *error)
 {
     const double one = 1.0;
     lw_status status = LW_OK;
@@ -178,7 +176,7 @@ static lw_status take_units(catch *got, const lw_penalty_graph *graph, lw_error 
 }
 
 /* X holds a trial space of q vectors; what is null in it is taken. */
-static lw_status reduce_all(catch *got, const lw_sparse *L, const lw_penalty_graph *graph, int q, double *X,
+static lw_status reduce_all(haul *got, const lw_sparse *L, const lw_penalty_graph *graph, int q, double *X,
                             lw_error *error)
 {
     double *Y = LW_NEW_ARRAY(double, L->rows *q);
@@ -196,15 +194,15 @@ static lw_status reduce_all(catch *got, const lw_sparse *L, const lw_penalty_gra
     return status;
 }
 
-static void start_again(catch *got)
+static void start_again(haul *got)
 {
     got->null->defect = 0;
     got->entries = 0;
     got->full = 0;
 }
 
-static lw_status search(catch *got, const lw_system *system, const lw_sparse *L,
-                        const lw_penalty_graph *graph, int thorough, const lw_watch *watch, lw_error *error)
+static lw_status search(haul *got, const lw_system *system, const lw_sparse *L, const lw_penalty_graph *graph,
+                        int thorough, const lw_watch *watch, lw_error *error)
 {
     lw_status status = LW_OK;
     for (int q = thorough ? FIRST_BLOCK : POLYNOMIALS;; q *= 2) {
@@ -232,7 +230,7 @@ lw_status lw_penalty_null_find(const lw_system *system, const lw_sparse *L, int 
 {
     lw_penalty_graph graph;
     *out = (lw_penalty_null){0};
-    catch got = {.null = out, .most = most};
+    haul got = {.null = out, .most = most};
     lw_status status = lw_penalty_graph_make(L, &graph, error);
     if (status == LW_OK) status = search(&got, system, L, &graph, thorough, watch, error);
     if (status == LW_OK) status = lw_sparse_new(L->columns, out->defect, got.entries, 0, &out->basis, error);

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** The null space of a sparse penalty: what ||L x|| does not see, component by component of its graph.
  *
  *  A component is a set of columns that rows tie together; a column without entries is one by itself, and its

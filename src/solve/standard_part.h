@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** What the files of the standard form share among themselves; see standard_form.h. */
 #ifndef LW_SOLVE_STANDARD_PART_H
 #define LW_SOLVE_STANDARD_PART_H

@@ -75,6 +75,20 @@ static double *take_doubles(FILE *file, int64_t count)
     return value;
 }
 
+static lw_ids *number_ids(const char *kind, int64_t count)
+{
+    lw_error error = {0};
+    lw_ids *ids;
+    char text[40];
+    bench_check(lw_ids_new(count, &ids, &error), &error);
+    for (int64_t i = 0; i < count; i++) {
+        int64_t number;
+        int added, length = snprintf(text, sizeof text, "%s%lld", kind, (long long)i);
+        bench_check(lw_ids_add(ids, text, (size_t)length, &number, &added, &error), &error);
+    }
+    return ids;
+}
+
 lw_problem *bench_problem(const char *path)
 {
     FILE *file = fopen(path, "rb");
@@ -102,6 +116,8 @@ lw_problem *bench_problem(const char *path)
         problem->coordinate[a] = NULL;
     }
     fclose(file);
+    problem->observations = number_ids("o", problem->m);
+    problem->parameters = number_ids("p", problem->n);
     problem->value_unit = lw_copy_text("");
     problem->parameter_unit = lw_copy_text("");
     problem->folder = lw_copy_text("bench");

@@ -107,8 +107,8 @@ def loop(place, figures):
 
 
 def smoothing(place, figures):
-    cases = [(place.make('cross-40.lwm', generate.cross_hole, 40), 1600, None, None)] if place.quick else \
-        [(place.make('cross-100.lwm', generate.cross_hole, 100), 10 ** 4, 20, 10), (ray_file(place, 10 ** 5), 10 ** 5, 40, 10)]
+    cases = [(place.make('rays-2d-1600.lwm', generate.rays, (40, 40), 1500), 1600, None, None)] if place.quick else \
+        [(ray_file(place, 10 ** 4), 10 ** 4, 20, 10), (ray_file(place, 10 ** 5), 10 ** 5, 40, 10)]
     for path, n, wanted, share in cases:
         top = largest_singular(path)
         low, high, count, tool = repr(top * 1e-1), repr(top * 1e2), '50', place.tool('sweep')

@@ -4,7 +4,7 @@
  *   solve     one solve at damping FROM
  *   separate  every damping of the grid solved alone to the error bound that the sweep gives it
  *   stacked   LSQR on [A; damping L] for every STRIDE-th damping (COUNT/STRIDE), stopped at the steps that first bring
- *             ||L (x - x_sweep)|| / ||L x_sweep|| below 1e-3 (1e-6 nearest the smallest choice)  */
+ *             ||L (x - x_sweep)|| / ||L x_sweep|| below 1e-3 */
 #include "bench.h"
 
 #include "core/memory.h"
@@ -79,6 +79,8 @@ static void run_sweep(setting *s)
     }
     bench_tell("with_model", from);
     bench_tell_number("choice", chosen);
+    for (int i = 0; i < curve->choices; i++)
+        printf("choice_%s %.6g\n", lw_criterion_name(curve->choice[i].criterion), curve->choice[i].damping);
     bench_tell_number("steps", (double)curve->steps);
     bench_tell_peak(before);
     for (int i = 0; i < curve->count; i++) printf("bound_%d %.6g\n", i, curve->row[i].point.error_bound);
@@ -181,15 +183,15 @@ static void run_stacked(setting *s)
     int solved = 0;
     decompose(s, 1, 1, 0, &decomposition);
     lw_curve *curve = make_curve(s, decomposition, true);
-    double chosen = smallest_choice(curve), *model = bench_sure(LW_NEW_ARRAY(double, s->system->columns));
+    double *model = bench_sure(LW_NEW_ARRAY(double, s->system->columns));
     bench_check(lw_system_operator(s->system, &product, &s->watch, &A, &error), &error);
     bench_check(lw_product_new(s->system->penalty, &product, &L, &error), &error);
     for (int i = STRIDE / 2; i < curve->count; i += STRIDE) {
         lw_point point;
         double lambda = curve->row[i].point.lambda;
-        if (lambda < chosen / 2) continue;
+        if (!(curve->row[i].point.error_bound <= 1e-3)) continue;
         bench_check(decomposition->methods->evaluate(decomposition, 1, &lambda, 0, &point, model, &s->watch, &error), &error);
-        spent += stack_one(s, A, L, lambda, fmax(curve->row[i].point.error_bound, 1e-4), model, &steps);
+        spent += stack_one(s, A, L, lambda, fmax(curve->row[i].point.error_bound, 1e-3), model, &steps);
         solved++;
     }
     bench_tell_number("stacked_cpu", spent);

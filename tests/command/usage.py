@@ -335,7 +335,7 @@ def _():
         equal(done.returncode, 2, words)
         matches(done.stderr, 'bounds')
     case = Case(**small())
-    for words, pattern in ((['--search-outliers', '--damping', '1'], 'posterior'), (['--prefer', 'flattest', '--damping', '1'], 'coordinates|x, y'),
+    for words, pattern in ((['--search-outliers', '--damping', '1'], 'posterior|prior_sigma'), (['--prefer', 'flattest', '--damping', '1'], 'coordinates|x, y'),
                            (['--prefer', 'own', '--damping', '1'], 'penalty'), (['--resolution-of', 'nobody'], 'nobody'),
                            (['--covariance-of', 'nowhere.txt'], 'nowhere'), (['--scale-sigma', 'nobody=2'], 'nobody'), (['--vtk'], 'coordinates|x, y')):
         done = case.run('solve', *words)

@@ -110,7 +110,7 @@ def check_wide(tap, browser, name, folder):
 
 
 def check_paper(tap, browser, name, folder):
-    browser.run("window.vectors = 0; window.addEventListener('beforeprint', () => setTimeout(() => {}, 0));"
+    browser.run("window.vectors = 0;"
                 "window.addEventListener('beforeprint', () => { window.vectors = document.querySelectorAll('.vector-cells path').length; })")
     pdf = browser.print_pdf()
     with open(os.path.join(folder, f"{name}.pdf"), "wb") as file:
@@ -152,6 +152,25 @@ def check_network(tap, folder, name, path, hostile=False):
         check_text(tap, browser, name)
         check_paper(tap, browser, name, folder)
         check_wide(tap, browser, name, folder)
+        check_quiet(tap, browser, name)
+    finally:
+        browser.close()
+
+
+def check_plain(tap, folder, name, path, wanted):
+    """Pages with less to show: the sections named are there, and nothing fails."""
+    browser = Browser()
+    try:
+        browser.open(path)
+        there = browser.run("return [...document.querySelectorAll('main > section')].map(n => n.id)")
+        missing = [section for section in wanted if section not in there]
+        tap.check(not missing, f"{name}: shows {', '.join(wanted)}", f"missing: {missing}")
+        if "explore" in wanted:
+            browser.keys(RIGHT)
+            tap.check(browser.run("return document.getElementById('solve-command').textContent").startswith("leastwise solve"),
+                      f"{name}: the command is there")
+        check_text(tap, browser, name)
+        check_paper(tap, browser, name, folder)
         check_quiet(tap, browser, name)
     finally:
         browser.close()
@@ -210,6 +229,10 @@ def main():
         check_sweep(tap, folder, "cells", os.path.join(folder, "cells.html"))
         check_sweep(tap, folder, "slices", os.path.join(folder, "slices.html"))
         check_network(tap, folder, "network", os.path.join(folder, "network.html"), hostile=True)
+        check_plain(tap, folder, "recovery", os.path.join(folder, "recovery.html"), ["probe", "coverage", "inputs", "cautions"])
+        check_plain(tap, folder, "unanswered", os.path.join(folder, "unanswered.html"), ["curve", "criteria", "explore", "inputs"])
+        check_plain(tap, folder, "profile", os.path.join(folder, "profile.html"), ["curve", "explore", "residuals", "model"])
+        check_plain(tap, folder, "forgotten", os.path.join(folder, "forgotten.html"), ["curve", "explore", "residuals", "model"])
         measure_large(tap, os.path.join(folder, "large.html"))
         for command, name, path in demo_reports(folder):
             (check_sweep if command == "sweep" else check_network)(tap, folder, name, path)

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** Problems built by hand, for tests of the layers above the files. Everything is copied; a failed allocation
  * aborts. */
 #ifndef LW_TESTS_UNIT_SUPPORT_H

@@ -15,6 +15,8 @@ Suite *suite_reliability(void);
 Suite *suite_outlier(void);
 Suite *suite_damped(void);
 Suite *suite_variance_components(void);
+Suite *suite_memory_faults(void);
+Suite *suite_probe(void);
 
 /** Decomposed, estimated and with its certainty; asserts success. Everything is owned by the struct. */
 typedef struct adjusted {

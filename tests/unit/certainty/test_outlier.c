@@ -60,7 +60,7 @@ START_TEST(test_clean_networks)
 END_TEST
 
 /* Three gross errors are found, the most significant first, and every statistic is that of a full solution.
- */
+ * */
 START_TEST(test_three_errors)
 {
     lw_problem *p = levelling_net(9);
@@ -101,8 +101,8 @@ START_TEST(test_three_errors)
 }
 END_TEST
 
-/* A line fit in which two gross errors at one end make the good reading far out, which holds the slope, look
- * worst: it is set aside first and comes back once the two are out. */
+/* A line fit in which two gross errors at one end make the good reading far out, which holds the slope,
+ * look worst: it is set aside first and comes back once the two are out. */
 START_TEST(test_reinstated)
 {
     double A[22], y[11], sigma[11];

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Reliability by its properties: sums, deletion of readings, correlated and singular cases, false alarms and
- * power. */
+/* Reliability by its properties: sums, deletion of readings, correlated and singular cases, false alarms
+ * and power. */
 #include "check_certainty.h"
 
 #include "core/chance.h"
@@ -185,8 +185,8 @@ START_TEST(test_zero_residuals)
 }
 END_TEST
 
-/* 1000 networks: false alarms at rate alpha, and an error of the detectable size found with the power. Noise
- * is put on the readings of one network; the limits are three standard errors of a binomial count. */
+/* 1000 networks: false alarms at rate alpha, and an error of the detectable size found with the power.
+ * Noise is put on the readings of one network; the limits are three standard errors of a binomial count. */
 START_TEST(test_false_alarms_and_power)
 {
     const int trials = 1000;

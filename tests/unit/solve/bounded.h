@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** Bounded least-squares problems. Which bounds hold: SciPy 1.10.1, scipy.optimize.lsq_linear(method="bvls",
  * tol=1e-15, max_iter=1000); x: the rest solved in rational arithmetic (Python's fractions) and the
  * optimality conditions checked in it. To repeat: solve every problem below as it stands (A row-major; of the

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** Filip (NIST Statistical Reference Datasets, linear regression, higher difficulty): y = B0 + B1 x + ... +
  * B10 x^10. Expected: normal equations of the data as written solved in rational arithmetic (Python's
  * fractions), 31 digits; they agree with the certified values to all of their 15 digits. */

@@ -1,3 +1,4 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
 /** A first-kind integral equation, midpoint rule, 20 x 20: A_ij = kernel[|i - j|], vertical attraction of a
  * buried mass line, depth 0.25; sigma alternates 0.01, 0.02. Constructed for these tests. Expected: 60-digit
  * arithmetic (normal equations), confirmed with the standard-form transformation of GSL 2.7.1 (norms 1e-12,

@@ -296,6 +296,56 @@ START_TEST(a_zero_correction_is_no_failure)
 }
 END_TEST
 
+/* The exact products give the same bytes for any team. */
+START_TEST(exact_products_do_not_depend_on_threads)
+{
+    const int64_t m = 9000, n = 5000, each = 4;
+    lw_sparse *A = NULL;
+    uint64_t state = 13;
+    double *value = LW_NEW_ZEROS(double, m);
+    lw_decimal *x = LW_NEW_ARRAY(lw_decimal, n), *y = LW_NEW_ZEROS(lw_decimal, m), *g[2], *f[2];
+    ck_assert_int_eq(lw_sparse_new(m, n, n * each, 1, &A, NULL), LW_OK);
+    for (int64_t j = 0; j < n; j++) {
+        A->start[j] = j * each;
+        x[j] = lw_two_sum(next_random(&state), 1e-17 * next_random(&state));
+        for (int64_t e = 0; e < each; e++) {
+            A->index[j * each + e] = (int32_t)(e * (m / each) + j * 37 % (m / each));
+            A->value[j * each + e] = next_random(&state);
+            A->low[j * each + e] = 1e-17 * next_random(&state);
+        }
+    }
+    A->start[n] = n * each;
+    for (int64_t i = 0; i < m; i++) y[i] = lw_decimal_of(next_random(&state));
+    lw_problem *problem = problem_from_sparse(A, value, NULL);
+    lw_system *system = system_of(problem, NULL);
+    for (int k = 0; k < 2; k++) {
+        lw_team *team = NULL;
+        ck_assert_int_eq(lw_team_new(1 + 2 * k, &team, NULL), LW_OK);
+        g[k] = LW_NEW_ARRAY(lw_decimal, n);
+        f[k] = LW_NEW_ZEROS(lw_decimal, m);
+        lw_system_subtract_exact(system, x, team, f[k]);
+        lw_system_transposed_exact(system, y, team, g[k]);
+        lw_team_free(team);
+    }
+    ck_assert_mem_eq(f[0], f[1], (size_t)m * sizeof(lw_decimal));
+    ck_assert_mem_eq(g[0], g[1], (size_t)n * sizeof(lw_decimal));
+    /* y'A x both ways, to the last digits of double-double */
+    lw_decimal forth = {0, 0}, back = {0, 0};
+    for (int64_t i = 0; i < m; i++) forth = lw_decimal_subtract(forth, lw_decimal_multiply(y[i], f[0][i]));
+    for (int64_t j = 0; j < n; j++) back = lw_decimal_add(back, lw_decimal_multiply(x[j], g[0][j]));
+    ck_assert_double_le(fabs(lw_decimal_subtract(forth, back).high), 1e-27);
+    for (int k = 0; k < 2; k++) {
+        lw_free(f[k]);
+        lw_free(g[k]);
+    }
+    lw_free(value);
+    lw_free(x);
+    lw_free(y);
+    lw_system_free(system);
+    lw_problem_free(problem);
+}
+END_TEST
+
 Suite *suite_exact(void)
 {
     Suite *suite = suite_create("exact");
@@ -305,6 +355,7 @@ Suite *suite_exact(void)
     tcase_add_test(tcase, conditions_are_told_in_their_own_scale);
     tcase_add_test(tcase, gates_a_useless_factor);
     tcase_add_test(tcase, a_zero_correction_is_no_failure);
+    tcase_add_test(tcase, exact_products_do_not_depend_on_threads);
     suite_add_tcase(suite, tcase);
     return suite;
 }

@@ -7,8 +7,8 @@
 
 #include <math.h>
 
-/* Brownlee, Statistical Theory and Methodology in Science and Engineering, 1960, pp. 491-500 (stack loss data
- * of R). Huber with constant 1.345 and scale median |r| / 0.6745 converged to 1e-14 (MASS::rlm, and an
+/* Brownlee, Statistical Theory and Methodology in Science and Engineering, 1960, pp. 491-500 (stack loss
+ * data of R). Huber with constant 1.345 and scale median |r| / 0.6745 converged to 1e-14 (MASS::rlm, and an
  * independent iteration to 7e-14); least absolute deviations as exact fractions (linear programming;
  * quantreg). */
 static const double stack[21][4] = {{80, 27, 89, 42}, {80, 27, 88, 37}, {75, 25, 90, 37}, {62, 24, 87, 28},
