@@ -77,6 +77,7 @@ static void lend(lw_work *work)
     run->probe = work->probe;
     run->models = work->models;
     run->certainty = work->certainty;
+    run->asked = &work->arguments->certainty;
     run->outliers = work->outliers;
     run->weight = work->weight;
     run->at_bound = work->at_bound;

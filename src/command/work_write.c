@@ -143,6 +143,7 @@ static void print_verdict(const lw_work *work)
     if (work->curve) lw_plot_choices(work->curve, stdout);
     if (work->curve && isatty(STDOUT_FILENO)) lw_plot_curve(work->curve, stdout);
     for (int k = 0; k < verdict.cautions; k++) printf("! %s\n", verdict.caution[k]);
+    for (size_t k = 0; k < work->log.count; k++) printf("! %s\n", work->log.text[k]);
     printf("Run: %s   report: %s/report.html\n", work->out, work->out);
     fflush(stdout);
 }

@@ -119,6 +119,24 @@ static lw_status put_columns(lw_json *json, const lw_run *run, lw_error *error)
     return status;
 }
 
+/* Rows of the resolution matrix that were asked for: {of: [parameter], rows: [column]}. */
+static lw_status put_resolution_rows(lw_json *json, const lw_run *run, lw_error *error)
+{
+    int64_t n = run->problem->n, count = run->asked ? run->asked->resolution_count : 0;
+    if (!run->certainty || !run->certainty->resolution_rows || count == 0) return LW_OK;
+    lw_json_object(json, "resolution_rows");
+    lw_json_array(json, "of");
+    for (int64_t k = 0; k < count; k++) lw_json_integer(json, NULL, run->asked->resolution_of[k]);
+    lw_json_close(json);
+    lw_status status = LW_OK;
+    lw_json_array(json, "rows");
+    for (int64_t k = 0; k < count && status == LW_OK; k++)
+        status = lw_pack_numbers(json, NULL, n, run->certainty->resolution_rows + k * n, error);
+    lw_json_close(json);
+    lw_json_close(json);
+    return status;
+}
+
 lw_status lw_report_parameters(lw_json *json, const lw_run *run, lw_picture picture, lw_error *error)
 {
     const lw_problem *problem = run->problem;
@@ -130,6 +148,7 @@ lw_status lw_report_parameters(lw_json *json, const lw_run *run, lw_picture pict
     lw_json_close(json);
     lw_status status = put_columns(json, run, error);
     lw_json_close(json);
+    if (status == LW_OK) status = put_resolution_rows(json, run, error);
     if (status != LW_OK || !run->check || !run->check->hits || picture != LW_PICTURE_CELLS) return status;
     lw_cover_rule rule;
     status = lw_report_cover_rule(run, &rule, error);

@@ -11,10 +11,7 @@
 
 bool lw_report_posterior(const lw_run *run)
 {
-    const lw_certainty *c = run->certainty;
-    for (int64_t i = 0; run->damping > 0.0 && c && c->standardized && i < c->rows; i++)
-        if (!isnan(c->standardized[i])) return true;
-    return false;
+    return run->damping > 0.0 && run->asked && run->asked->meaning == LW_MEANS_POSTERIOR;
 }
 
 const char *lw_report_sigma_meaning(const lw_run *run)

@@ -28,6 +28,7 @@ typedef struct lw_run {
     const lw_curve *curve;         /**< sweep */
     const double *models;          /**< sweep: n x curve->count model values, or NULL */
     const lw_certainty *certainty;
+    const lw_certainty_options *asked; /**< what was asked of it: meaning of sigma, lists of parameters */
     const lw_outlier_log *outliers;
     const lw_probe *probe;         /**< probe */
     const double *weight;          /**< rows: final robust weights, or NULL */

@@ -28,7 +28,7 @@ static void write_bound(lw_csv_writer *writer, const lw_run *run, int64_t j)
         lw_csv_empty(writer);
         return;
     }
-    lw_csv_text(writer, run->at_bound[j] < 0 ? "lower" : run->at_bound[j] > 0 ? "upper" : "no");
+    lw_csv_text(writer, run->at_bound[j] < 0 ? "lower" : run->at_bound[j] > 0 ? "upper" : "");
     if (run->bound_multiplier) lw_csv_number(writer, run->bound_multiplier[j]);
 }
 

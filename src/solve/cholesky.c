@@ -21,32 +21,23 @@ typedef struct cholesky_state {
     int64_t extra_in; /* number of the extra rows that `data` has */
 } cholesky_state;
 
-/* data <- A'A + extra'extra + 0 I. */
+/* data <- A'A + extra'extra; a Gram matrix has every diagonal place. */
 static lw_status make_data(lw_direct *self, lw_error *error)
 {
     cholesky_state *state = self->state;
-    int64_t n = self->base.system->columns;
-    lw_sparse *gram = NULL, *unit = NULL, *extra = NULL, *sum = NULL;
+    lw_sparse *gram = NULL, *extra = NULL;
     lw_sparse_free(state->data);
     state->data = NULL;
     lw_status status = lw_sparse_gram(self->base.system->matrix, NULL, &gram, error);
-    if (status == LW_OK) status = lw_sparse_new(n, n, n, 0, &unit, error);
-    if (status == LW_OK) {
-        for (int64_t j = 0; j < n; j++) unit->start[j] = j, unit->index[j] = (int32_t)j, unit->value[j] = 1;
-        unit->start[n] = n;
-        status = lw_sparse_add(1, gram, 0, unit, &sum, error);
-    }
-    lw_sparse_free(gram);
-    lw_sparse_free(unit);
     if (status == LW_OK && self->extra) {
         status = lw_sparse_gram(self->extra, NULL, &extra, error);
-        if (status == LW_OK) status = lw_sparse_add(1, sum, 1, extra, &state->data, error);
+        if (status == LW_OK) status = lw_sparse_add(1, gram, 1, extra, &state->data, error);
     } else if (status == LW_OK) {
-        state->data = sum;
-        sum = NULL;
+        state->data = gram;
+        gram = NULL;
     }
     lw_sparse_free(extra);
-    lw_sparse_free(sum);
+    lw_sparse_free(gram);
     if (status == LW_OK) state->extra_in = self->extra_number;
     return status;
 }

@@ -4,6 +4,8 @@
 #include "core/memory.h"
 #include "matrix/vector.h"
 
+#include <math.h>
+
 static const char *const names[] = {"direct",    "refined", "tolerance",   "steps", "stagnated",
                                     "breakdown", "memory",  "interrupted", "zero"};
 static const char *const words[] = {
@@ -74,7 +76,7 @@ static lw_status fill_from_model(const lw_system *system, double lambda, const d
     if (!penalty)
         return lw_fail_memory(error, "the penalty of the estimate", (size_t)system->penalty_rows * 8);
     lw_system_penalize(system, z, penalty);
-    e->point.size = lw_norm(system->penalty_rows, penalty, NULL);
+    e->point.size = hypot(lw_norm(system->penalty_rows, penalty, NULL), system->penalty_constant);
     e->point.lambda = lambda;
     lw_free(penalty);
     return LW_OK;

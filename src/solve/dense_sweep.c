@@ -4,6 +4,7 @@
 #include "core/memory.h"
 #include "matrix/dense.h"
 #include "matrix/vector.h"
+#include "solve/standard_null.h"
 
 #include <math.h>
 #include <string.h>
@@ -201,6 +202,7 @@ lw_status lw_dense_sweep_make(const lw_system *system, const lw_sparse *penalty,
     if (status == LW_OK && !(side = LW_NEW_ARRAY(double, lw_bytes(m, w->t + 1))))
         status = short_of_memory(error, m * n);
     if (status == LW_OK) status = reduce(w, z1, side, error);
+    if (status == LW_OK && w->q > 0) lw_standard_warn(lw_watch_log(watch), w->q, w->an.rcond);
     if (status == LW_OK) status = decompose(w, z1, side, error);
     lw_free(z1);
     lw_free(side);
@@ -225,7 +227,7 @@ static void sums_at(const lw_dense_sweep *w, double lambda, lw_point *point)
     }
     point->chi_square = misfit + rest * rest;
     point->misfit = sqrt(point->chi_square);
-    point->size = sqrt(size);
+    point->size = hypot(sqrt(size), w->system->penalty_constant);
     point->size_slope = slope;
     point->effective_parameters = trace;
 }

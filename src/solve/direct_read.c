@@ -5,6 +5,7 @@
 #include "matrix/vector.h"
 #include "solve/direct.h"
 
+#include <math.h>
 #include <string.h>
 
 #define MOST_REFINEMENTS 10
@@ -19,7 +20,7 @@ static lw_status size_and_slope(lw_direct *self, double lambda, const double *z,
     point->size_slope = 0;
     if (status == LW_OK) {
         lw_sparse_apply(self->penalty, 1, z, row);
-        point->size = lw_norm(p, row, NULL);
+        point->size = hypot(lw_norm(p, row, NULL), self->base.system->penalty_constant);
         lw_sparse_apply_transposed(self->penalty, 1, row, g);
     }
     if (status == LW_OK && lambda > 0) {

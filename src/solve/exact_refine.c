@@ -8,6 +8,7 @@
 #include <math.h>
 
 #define ENOUGH 1e-25 /* relative correction below which nothing printed can change */
+#define FORESEEN 1e-27 /* the same for the next correction, foreseen from the last two */
 #define GATE 0.1     /* contraction above which the factor is not trusted */
 #define SURE 1e-15   /* last relative correction that still leaves a double right */
 #define SHRINKS 0.5  /* a correction must be smaller than this times the one before */
@@ -90,8 +91,10 @@ lw_status lw_exact_refine(lw_exact *exact, lw_exact_side side, int64_t column,
             out->last = whole > 0.0 ? now / whole : 0.0;
         }
         if (step == 1) out->contraction = before > 0.0 ? now / before : 0.0;
+        double shrinks = before > 0.0 ? now / before : 1.0;
         before = step == 0 ? fmax(now, size_of_side * 0x1p-46) : now;
         if (step > 0 && out->last <= ENOUGH) break;
+        if (step > 1 && out->last * shrinks <= FORESEEN) break;
     }
     if (status == LW_OK && most > 0 && !(out->contraction <= GATE && out->last <= SURE))
         status = LW_NOT_CONVERGED;

@@ -91,7 +91,7 @@ static lw_status read_models(lw_krylov *self, int count, const double *lambda, c
 
 static void fill_point(const lw_krylov *self, double lambda, const lw_projected *at, lw_point *point)
 {
-    *point = (lw_point){.lambda = lambda, .misfit = at->misfit, .size = at->size, .size_slope = at->slope};
+    *point = (lw_point){.lambda = lambda, .misfit = at->misfit, .size = hypot(at->size, self->base.system->penalty_constant), .size_slope = at->slope};
     point->chi_square = at->misfit * at->misfit;
     point->effective_parameters = point->effective_spread = (double)NAN;
     /* the recurrence goes on falling below what rounding leaves of the gradient */

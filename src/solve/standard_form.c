@@ -163,6 +163,7 @@ static lw_status project_null(lw_standard_form *form, const lw_watch *watch, lw_
     }
     lw_free(AN);
     if (status == LW_OK && form->qr.rank < d) return undetermined(form, error);
+    if (status == LW_OK) lw_standard_warn(lw_watch_log(watch), d, form->qr.rcond);
     form->Q = LW_NEW_ZEROS(double, lw_bytes(tall, d));
     form->small = LW_NEW_ARRAY(double, d);
     form->tall = LW_NEW_ARRAY(double, m *LW_STANDARD_BLOCK);

@@ -248,3 +248,12 @@ lw_status lw_penalty_null_find(const lw_system *system, const lw_sparse *L, int 
     if (status != LW_OK) lw_penalty_null_clear(out);
     return status;
 }
+
+void lw_standard_warn(lw_log *log, int64_t directions, double rcond)
+{
+    if (!(rcond < 1e-5)) return;
+    lw_log_add(log,
+               "The data hardly determine a direction that the penalty leaves alone (%lld such directions, condition %.1e): "
+               "parameters run away along it at any damping. --also-smallest 0.01, --prefer flattest or a prior_sigma hold it.",
+               (long long)directions, 1.0 / rcond);
+}

@@ -112,7 +112,7 @@ def cross_hole(path, side):
 
 def network(path, dimension, unknowns, shuffled=False):
     """About three readings an unknown between near points of a jittered lattice; readings to the first two points, which are
-    held, lose those columns. 2-D: distances; 3-D: baselines, three readings each."""
+    held, lose those columns. 2-D: distances; 3-D: baselines of three correlated components, whitened."""
     rng = np.random.default_rng(7)
     side = max(4, int(round(np.sqrt(unknowns / dimension))))
     number = np.arange(side * side).reshape(side, side)
@@ -134,10 +134,13 @@ def network(path, dimension, unknowns, shuffled=False):
         values = np.concatenate([-way, way], axis=1).ravel()
         A = sp.csr_matrix((values, (rows, columns)), shape=(m, 2 * side * side))
     else:
-        rows = np.repeat(np.arange(3 * m), 2)
-        axis = np.tile(np.arange(3), m)
-        columns = np.stack([3 * np.repeat(order[a], 3) + axis, 3 * np.repeat(order[c], 3) + axis], axis=1).ravel()
-        A = sp.csr_matrix((np.tile([-1.0, 1.0], 3 * m), (rows, columns)), shape=(3 * m, 3 * side * side))
+        whiten = np.linalg.inv(np.linalg.cholesky(np.array([[1.0, 0.3, -0.2], [0.3, 1.2, 0.4], [-0.2, 0.4, 2.0]])))
+        i, j = np.tril_indices(3)
+        rows = (3 * np.arange(m)[:, None] + i).ravel()
+        way = sp.csr_matrix((np.tile(whiten[i, j], m), (rows, (3 * np.arange(m)[:, None] + j).ravel())))
+        rows, axis = np.repeat(np.arange(3 * m), 2), np.tile(np.repeat(np.arange(3), 2), m)
+        columns = 3 * np.stack([order[a], order[c]], axis=1).repeat(3, axis=0).ravel() + axis
+        A = way @ sp.csr_matrix((np.tile([-1.0, 1.0], 3 * m), (rows, columns)), shape=(3 * m, 3 * side * side))
     keep = np.ones(A.shape[1], bool)
     for point in order[:2]:
         keep[dimension * point:dimension * (point + 1)] = False

@@ -92,8 +92,10 @@ START_TEST(what_may_mislead_is_said)
     expect(s, lw_report_cautions, "upper bounds", true);
     ck_assert_ptr_null(lw_report_sigma_meaning(&s->run));
     s->run.damping = 2.0;
+    lw_certainty_options asked = {.meaning = LW_MEANS_POSTERIOR};
+    s->run.asked = &asked;
     ck_assert_ptr_nonnull(strstr(lw_report_sigma_meaning(&s->run), "posterior"));
-    for (int i = 0; i < 16; i++) s->certainty.standardized[i] = LW_UNKNOWN;
+    asked.meaning = LW_MEANS_NOISE;
     ck_assert_ptr_nonnull(strstr(lw_report_sigma_meaning(&s->run), "bias"));
     sample_free(s);
     s = sample_sweep(6, 5, 40, 6, 10);
