@@ -154,7 +154,9 @@ lw_status lw_certainty_make(lw_decomposition *decomposition, const lw_estimate *
     w.damped = estimate->point.lambda > 0;
     w.noise = w.damped && options->meaning == LW_MEANS_NOISE;
     lw_status status = certainty_new(w.system, &w.out, error);
-    if (status == LW_OK && (options->sigma || options->reliability))
+    bool entries = options->sigma || (options->reliability && !w.noise) || options->covariance_count != 0 ||
+                   options->resolution_count > 0; /* else no factor is made for nothing */
+    if (status == LW_OK && entries)
         status = lw_cofactor_new(decomposition, estimate->point.lambda, watch, &w.cofactor, error);
     else if (status == LW_OK)
         status = lw_cofactor_none(decomposition, estimate->point.lambda, &w.cofactor, error);

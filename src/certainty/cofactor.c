@@ -9,6 +9,9 @@
 #include <stdlib.h>
 #include <string.h>
 
+/* A factor of our own is trusted to this reciprocal condition (an upper estimate) of the normal matrix. */
+#define LEAST_RCOND (64 * DBL_EPSILON)
+
 /* N = A'A + lambda^2 L'L, upper triangle. */
 static lw_status normal_matrix(lw_system *system, double lambda, const lw_watch *watch, lw_sparse **out,
                                lw_error *error)
@@ -44,14 +47,18 @@ static lw_status factor_own(lw_cofactor *c, const lw_watch *watch, lw_error *err
     if (status == LW_OK &&
         lw_watch_budget(watch, lw_bytes(2, size.bytes), "standard deviations", "", &quiet) == LW_OK) {
         status = lw_cholesky_factorize(c->own_factor, normal, watch, &defect, &quiet);
-        if (status == LW_OK) status = lw_cholesky_view(c->own_factor, &c->source.view, error);
-        if (status == LW_OK) {
-            double rcond = lw_cholesky_rcond(c->own_factor);
+        double rcond = status == LW_OK ? lw_cholesky_rcond(c->own_factor) : 0;
+        if (rcond > LEAST_RCOND) {
+            status = lw_cholesky_view(c->own_factor, &c->source.view, error);
             c->kind = LW_COFACTOR_SELECTED;
             c->source.columns = c->columns;
             c->error = 8 * DBL_EPSILON / rcond;
         }
         if (status == LW_UNSOLVABLE) status = LW_OK;
+    }
+    if (c->kind == LW_COFACTOR_NONE) {
+        lw_cholesky_free(c->own_factor);
+        c->own_factor = NULL;
     }
     lw_sparse_free(normal);
     return status;

@@ -14,7 +14,7 @@
 
 #include "certainty/cofactor.h"
 
-#define LW_RESOLUTION_PROBES 64
+#define LW_RESOLUTION_PROBES 32
 
 /** Diagonal by columns (z and model units agree), from entries after lw_cofactor_invert; *trace its sum. */
 lw_status lw_resolution_of_entries(const lw_cofactor *cofactor, const lw_watch *watch, double *diagonal,

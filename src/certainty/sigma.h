@@ -14,8 +14,8 @@
 
 #include "certainty/cofactor.h"
 
-/** Samples when none were asked for: 5 % error of a standard deviation. */
-#define LW_SIGMA_SAMPLES 200
+/** Samples when none were asked for: 7 % error of a standard deviation. */
+#define LW_SIGMA_SAMPLES 100
 /** Time units (about nanoseconds) that exact noise variances may take; beyond, samples. */
 #define LW_SIGMA_WORK 1.2e11
 

@@ -6,6 +6,9 @@
 
 /* Less movement than this between the neighbours of a row is rounding, not a curve. */
 #define LEAST_MOVEMENT 1e-6
+/* Path of ln misfit and ln size over a decade of damping below which the end of the range is the end of the
+ * curve. */
+#define LEAST_SPEED 0.1
 
 double lw_corner_curvature(const lw_point *point)
 {
@@ -53,10 +56,22 @@ static void say_none(const lw_look *look, lw_choice *choice)
                  most, at, LW_CORNER_LEAST);
     else
         snprintf(choice->warning, sizeof choice->warning,
-                 "No corner was found: the curvature is largest, %.3g, at the %s end of the range (damping "
-                 "%.4g); a wider range "
-                 "may show one.",
+                 "There is no corner inside the range: the curvature is largest, %.3g, at the %s end "
+                 "(damping %.4g), "
+                 "where the curve hardly moves.",
                  most, best == look->low ? "lower" : "upper", at);
+}
+
+/* The curve still bends ever more where the range ends below, and is on the move there: the corner is at the
+ * end or beyond. */
+static bool bends_at_end(const lw_look *look)
+{
+    if (look->low > 0 || look->count < 3) return false;
+    const lw_curve_row *end = &look->row[0], *next = &look->row[1];
+    if (!(end->curvature >= LW_CORNER_LEAST) || !(end->curvature > next->curvature)) return false;
+    double path =
+        fabs(log(next->point.misfit / end->point.misfit)) + fabs(log(next->point.size / end->point.size));
+    return path >= LEAST_SPEED * log10(next->point.lambda / end->point.lambda);
 }
 
 lw_status lw_corner_choose(lw_look *look, lw_choice *choice)
@@ -69,6 +84,16 @@ lw_status lw_corner_choose(lw_look *look, lw_choice *choice)
         lw_status status = lw_look_lowest(look, depth, at[i], &peak[kept]);
         if (status != LW_OK) return status;
         if (peak[kept].curvature >= LW_CORNER_LEAST) kept++;
+    }
+    if (kept == 0 && bends_at_end(look)) {
+        lw_look_take(choice, &look->row[0], look->row[0].curvature);
+        lw_look_range(look, depth, -(1.0 - LW_NEAR_OPTIMUM) * choice->value, choice);
+        snprintf(choice->warning, sizeof choice->warning,
+                 "The corner lies at the lower end of the range or below it: the curvature is largest there, "
+                 "%.3g at damping "
+                 "%.4g. A wider range would tell.",
+                 choice->value, choice->damping);
+        return LW_OK;
     }
     if (kept == 0) {
         say_none(look, choice);

@@ -16,8 +16,9 @@
  * power of lambda in the denominator is 4). */
 double lw_corner_curvature(const lw_point *point);
 
-/** Fills the choice: the largest curvature that is an interior maximum of at least LW_CORNER_LEAST, or none
- * with the reason. */
+/** Fills the choice: the largest curvature that is an interior maximum of at least LW_CORNER_LEAST; where
+ * there is none but the curve bends that much at the lower end of the range, and is still on the move, that
+ * end with a warning; else none, with the reason. */
 lw_status lw_corner_choose(lw_look *look, lw_choice *choice);
 
 #endif

@@ -97,7 +97,7 @@ def read_set(place, name):
     if name == 'Longley':
         design = [[('B' + str(j), Decimal(v)) for j, v in enumerate(['1'] + row[1:])] for row in data]
     else:
-        design = [[(f'B{p}', Decimal(row[1]) ** p) for p in POWERS[name]] for row in data]
+        design = [[(f'B{p}', Decimal(row[1]) ** p if p else Decimal(1)) for p in POWERS[name]] for row in data]
     return [row[0] for row in data], design, certified
 
 
@@ -139,8 +139,8 @@ def nist(place, figures):
         score = {(who, k): min(digits(answer[r['parameter']][k], r[exact]) for r in certified)
                  for who, answer in (('ours', ours), ('dgels', theirs))
                  for k, exact in ((0, 'exact_estimate'), (1, 'exact_standard_deviation'))}
-        rounded = [float(ours[r['parameter']][k]) == float(r[exact]) for r in certified
-                   for k, exact in ((0, 'exact_estimate'), (1, 'exact_standard_deviation'))]
+        rounded = [float(ours[r['parameter']][k]) == float(r[exact]) or (float(r[exact]) == 0 and digits(ours[r['parameter']][k], 0) > 0)
+                   for r in certified for k, exact in ((0, 'exact_estimate'), (1, 'exact_standard_deviation'))]
         right, seen = right + sum(rounded), seen + len(rounded)
         lines.append(f'| {name} | {score["dgels", 0]:.1f} | {score["dgels", 1]:.1f} | {score["ours", 0]:.1f} | {score["ours", 1]:.1f} | '
                      f'{sum(rounded)} of {len(rounded)} |')
@@ -149,7 +149,7 @@ def nist(place, figures):
     print(text)
     print(f'{right} of {seen} numbers are the exact value rounded to double')
     with open(os.path.join(place.data, 'accuracy.md'), 'w') as file:
-        file.write(text + f'\n\n{right} of {seen} numbers are the exact value rounded to double.\n')
+        file.write(text + f'\n\n{right} of {seen} numbers are the exact value rounded to double (an exact zero: below 1e-12).\n')
 
 
 SECTIONS = {'network': network, 'certainty': certainty, 'nist': nist, 'dense': dense}

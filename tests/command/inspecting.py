@@ -98,7 +98,7 @@ def _():
 def _():
     case = Case()
     crosshole(case, 6, 6, 8)
-    done = case.run('inspect', '--engine', 'lsqr')
+    done = case.run('inspect', '--engine', 'lsqr')  # it only looks: nothing that an engine cannot do is asked for
     equal(done.returncode, 0, done.stderr)
     matches(done.stdout, 'rank +not determined')
 

@@ -126,6 +126,31 @@ START_TEST(test_iterative_undamped)
 }
 END_TEST
 
+/* An iterative engine on a problem with a rank defect has no factor: sigmas are sampled, and said to be. */
+START_TEST(test_iterative_deficient)
+{
+    double A[M * 3], y[M];
+    uint64_t seed = 12;
+    for (int i = 0; i < M; i++) {
+        A[3 * i] = next_random(&seed);
+        A[3 * i + 1] = next_random(&seed);
+        A[3 * i + 2] = A[3 * i] + A[3 * i + 1];
+        y[i] = next_random(&seed);
+    }
+    lw_problem *p = problem_from_dense(M, 3, A, y, NULL);
+    lw_certainty_options options = default_options();
+    adjusted a = adjust(p, "lsqr", NULL, 0, 0, &options);
+    for (int j = 0; j < 3; j++) {
+        ck_assert_int_eq(a.certainty->sigma_kind[j], LW_SIGMA_SAMPLED);
+        ck_assert(a.certainty->sigma[j] > 0 && a.certainty->sigma[j] < 1);
+    }
+    ck_close(a.certainty->sigma_error, 1 / sqrt(2.0 * a.certainty->samples), 1e-15);
+    ck_assert_ptr_null(a.certainty->redundancy);
+    adjusted_clear(&a);
+    lw_problem_free(p);
+}
+END_TEST
+
 Suite *suite_damped(void)
 {
     Suite *suite = suite_create("damped");
@@ -134,6 +159,7 @@ Suite *suite_damped(void)
     tcase_add_loop_test(cases, test_sigma_and_resolution, 0, 6);
     tcase_add_loop_test(cases, test_samples, 0, 2);
     tcase_add_test(cases, test_iterative_undamped);
+    tcase_add_test(cases, test_iterative_deficient);
     suite_add_tcase(suite, cases);
     return suite;
 }

@@ -68,6 +68,25 @@ START_TEST(identity_has_no_corner)
 }
 END_TEST
 
+/* The corner of the gravity profile lies at 0.0136566877573 (see gravity.h): a range that ends above it says
+ * so. */
+START_TEST(corner_below_the_range)
+{
+    static const char *const engine[] = {"dense", "lsqr"};
+    for (int e = 0; e < 2; e++) {
+        double lambda[20];
+        lw_sweep_grid(0.02, 6, 20, lambda);
+        lw_sweep_options options = {.damping = lambda, .count = 20};
+        swept s = sweep_by(gravity_problem(NULL), false, engine[e], &options);
+        const lw_choice *corner = choice_of(&s, LW_BY_CORNER);
+        ck_assert_double_eq(corner->damping, 0.02);
+        ck_assert(corner->at.converged);
+        ck_assert_ptr_nonnull(strstr(corner->warning, "lower end"));
+        swept_clear(&s);
+    }
+}
+END_TEST
+
 Suite *suite_corner(void)
 {
     Suite *suite = suite_create("corner");
@@ -75,6 +94,7 @@ Suite *suite_corner(void)
     tcase_add_test(tcase, curvature_of_a_closed_form);
     tcase_add_test(tcase, curvature_that_is_not_defined);
     tcase_add_test(tcase, identity_has_no_corner);
+    tcase_add_test(tcase, corner_below_the_range);
     suite_add_tcase(suite, tcase);
     return suite;
 }
