@@ -73,7 +73,6 @@ typedef struct lw_certainty_options {
     int64_t covariance_count;     /**< -1: all */
     const int64_t *resolution_of; /**< parameters whose row of the resolution matrix is wanted */
     int64_t resolution_count;
-    bool components; /**< estimate a variance component for each group */
 } lw_certainty_options;
 
 typedef struct lw_global_test {

@@ -96,7 +96,7 @@ static lw_status step_forward(search *s, bool *more, lw_error *error)
     if (status == LW_OK) status = lw_deflation_add(d, row, error);
     if (status != LW_OK) return status;
     if (rival < 0)
-        return note(s, row, "set aside", w / s0, critical,
+        return note(s, row, "set_aside", w / s0, critical,
                     "largest statistic, above the critical value of the family", error);
     s->hidden[row] = true;
     snprintf(reason, sizeof reason, "an error in it cannot be told from one in '%.100s': look at both",
@@ -137,7 +137,7 @@ static lw_status conclude(search *s, double *w, lw_error *error)
         double s0 = divisor(s, d->chi_square + w[k] * w[k], d->count - 1);
         s->log->row_factor[row] = 0;
         s->log->set_aside++;
-        status = note(s, row, "kept aside", w[k] / s0, critical_value(s, d->count - 1),
+        status = note(s, row, "kept_aside", w[k] / s0, critical_value(s, d->count - 1),
                       "tried again: still above the critical value", error);
     }
     return status;

@@ -20,7 +20,7 @@
 typedef struct lw_outlier_step {
     int step;
     int64_t row;
-    const char *action; /**< "set aside", "reinstated", "kept aside", "kept" (not separable, no redundancy) */
+    const char *action; /**< "set_aside", "reinstated", "kept_aside", "kept" (not separable, no redundancy) */
     double statistic, critical;
     char reason[200];
 } lw_outlier_step;

@@ -6,11 +6,15 @@
 #include "core/memory.h"
 #include "table/csv_read.h"
 
+#include <unistd.h>
+
 /* A pattern file: parameter,value; parameters that it does not name are 0. */
 static lw_status read_pattern(const lw_work *work, const char *path, double *pattern, lw_error *error)
 {
     lw_csv *csv;
     lw_csv_batch batch;
+    if (access(path, F_OK) != 0)
+        return lw_fail(error, LW_BAD_INPUT, "%s:1:1: found no such file, expected a pattern (parameter,value)", path);
     lw_status status = lw_csv_open(path, &csv, error);
     if (status != LW_OK) return status;
     int id = lw_csv_require(csv, "parameter", "parameter,value", error);

@@ -3,6 +3,7 @@
 #include "command/selection.h"
 #include "command/work.h"
 
+#include "certainty/variance_components.h"
 #include "core/decimal.h"
 #include "core/memory.h"
 #include "solve/bounds.h"
@@ -106,6 +107,29 @@ static lw_status plain(lw_work *work, double lambda, lw_error *error)
     return status;
 }
 
+/* Variance components of the groups, at the weights that the estimate had. */
+static lw_status estimate_components(lw_work *work, lw_error *error)
+{
+    lw_system_options system = {.penalty = work->arguments->penalty, .row_factor = work->row_factor};
+    lw_variance_components *components = NULL;
+    lw_status status = keep(work, lw_variance_components_estimate(work->problem, &system, &work->arguments->solve, 0, &work->watch,
+                                                                  &components, error));
+    if (status == LW_OK) {
+        lw_variance_components_attach(components, work->certainty);
+        if (!components->converged)
+            lw_log_add(&work->log, "The variance components are not converged after %d iterations.", components->iterations);
+        for (int k = 0; k < components->count; k++) {
+            const lw_variance_component *group = &components->groups[k];
+            if (group->group >= 0 && !isnan(group->component))
+                lw_log_add(&work->log, "Group %s: variance component %.3g +- %.2g (%lld readings, redundancy %.1f); its sigmas would be "
+                           "multiplied by %.4g with --scale-sigma.", lw_ids_name(work->problem->group_names, group->group),
+                           group->component, group->sigma, (long long)group->observations, group->redundancy, group->scale);
+        }
+    }
+    lw_variance_components_free(components);
+    return status;
+}
+
 static lw_status certainty(lw_work *work, double lambda, lw_error *error)
 {
     lw_certainty_options *options = &work->arguments->certainty;
@@ -120,10 +144,10 @@ static lw_status certainty(lw_work *work, double lambda, lw_error *error)
     }
     if (lambda == 0.0 && work->estimate->rank >= 0) work->run.effective_parameters = (double)work->estimate->rank;
     options->sigma = !work->arguments->no_sigma;
-    options->components = work->arguments->variance_components;
     lw_status status = lw_select_parameters(work, error);
     if (status != LW_OK) return status;
-    return keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));
+    status = keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));
+    return status == LW_OK && work->arguments->variance_components ? estimate_components(work, error) : status;
 }
 
 lw_status lw_work_estimate(lw_work *work, double lambda, const char *chosen_by, lw_error *error)
@@ -136,6 +160,9 @@ lw_status lw_work_estimate(lw_work *work, double lambda, const char *chosen_by, 
     if (bounded && robust)
         return lw_fail(error, LW_BAD_USAGE, "--misfit %s does not go together with bounds: remove one of them",
                        misfit_name(work->arguments->misfit));
+    if (work->arguments->variance_components && lambda > 0.0)
+        return lw_fail(error, LW_BAD_USAGE, "--variance-components does not go together with --damping: the redundancy of the groups is "
+                       "that of an undamped problem");
     if (work->arguments->search_outliers) {
         if (lambda > 0.0)
             return lw_fail(error, LW_BAD_USAGE, "--search-outliers does not go together with --damping: the test statistics hold for "

@@ -137,7 +137,7 @@ def _():
         P, S = case.parameters(), case.summary()
         for p in 'BCD':
             for a in 'XYZ':
-                near(P[f'{a}_{p}']['estimate'], E[f'{a}_{p}'], 4e-16, what=f'{a}_{p}')
+                near(P[f'{a}_{p}']['estimate'], E[f'{a}_{p}'], 1e-15, what=f'{a}_{p}')
                 near(P[f'{a}_{p}']['sigma'], E[f'{prefix}{a}_{p}'], 1e-12, what=f'sd {a}_{p}')
         for k, r in case.residuals().items():
             near(r['residual'], E['residual_' + k], 1e-10, 1e-14, 'residual ' + k)

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Every allocation in turn fails: the call says so, gives nothing, and loses nothing (run with sanitizers). */
+/* Every allocation in turn fails: the call says so, gives nothing and loses nothing (see
+ * --enable-sanitizers). */
 #include "check_certainty.h"
 
 #include "certainty/outlier.h"

@@ -71,7 +71,7 @@ START_TEST(test_three_errors)
     ck_assert_int_eq(log->set_aside, 3);
     ck_assert(log->row_factor[7] == 0 && log->row_factor[22] == 0 && log->row_factor[41] == 0);
     ck_assert_int_eq(log->steps[0].row, 7);
-    ck_assert_str_eq(log->steps[0].action, "set aside");
+    ck_assert_str_eq(log->steps[0].action, "set_aside");
     double factor[M];
     for (int i = 0; i < M; i++) factor[i] = 1;
     lw_certainty_options options = default_options();
@@ -90,7 +90,7 @@ START_TEST(test_three_errors)
         adjusted_clear(&a);
     }
     ck_assert_int_eq(log->count, 6);
-    for (int k = 3; k < 6; k++) ck_assert_str_eq(log->steps[k].action, "kept aside");
+    for (int k = 3; k < 6; k++) ck_assert_str_eq(log->steps[k].action, "kept_aside");
     adjusted a = adjust(p, "dense", log->row_factor, 0, 0, &options);
     for (int64_t i = 0; i < M; i++)
         if (log->row_factor[i] != 0)
@@ -115,8 +115,8 @@ START_TEST(test_reinstated)
     }
     lw_problem *p = problem_from_dense(11, 2, A, y, sigma);
     lw_outlier_log *log = search(p, "dense", false, 6);
-    static const char *const action[] = {"set aside",  "set aside",  "set aside",
-                                         "reinstated", "kept aside", "kept aside"};
+    static const char *const action[] = {"set_aside",  "set_aside",  "set_aside",
+                                         "reinstated", "kept_aside", "kept_aside"};
     static const int64_t row[] = {10, 8, 9, 10, 8, 9};
     ck_assert_int_eq(log->count, 6);
     ck_assert_int_eq(log->set_aside, 2);

@@ -89,6 +89,44 @@ START_TEST(test_definitions)
 }
 END_TEST
 
+/* Two exact conditions: Q_c = Q - Q C'(C Q C')^-1 C Q, and two more degrees of freedom. */
+START_TEST(test_conditions)
+{
+    static const double d[] = {0.5, -1};
+    double C[2 * N] = {0}, CQ[2 * N], S[4], Q[N * N], A[M * N], W[M * N], sum = 0;
+    lw_error error = {0};
+    int64_t defect;
+    C[0] = 1, C[3] = -2, C[7] = 1, C[N + 5] = 1, C[N + 11] = 1;
+    lw_problem *p = random_network(13, false);
+    problem_set_conditions(p, 2, C, d);
+    lw_sparse_to_dense(p->design, A);
+    for (int k = 0; k < M * N; k++) W[k] = A[k] / p->sigma[k % M];
+    lw_dense_multiply(1, 0, N, N, M, 1, W, M, W, M, 0, Q, N);
+    ck_assert_int_eq(lw_dense_cholesky(N, Q, &defect, &error), LW_OK);
+    ck_assert_int_eq(lw_dense_cholesky_invert(N, Q, &error), LW_OK);
+    lw_dense_multiply(1, 0, 2, N, N, 1, C, N, Q, N, 0, CQ, 2); /* C row-major is C' column-major */
+    lw_dense_multiply(0, 0, 2, 2, N, 1, CQ, 2, C, N, 0, S, 2);
+    double det = S[0] * S[3] - S[1] * S[2], T[4] = {S[3] / det, -S[1] / det, -S[2] / det, S[0] / det},
+           TCQ[2 * N];
+    lw_dense_multiply(0, 0, 2, N, 2, 1, T, 2, CQ, 2, 0, TCQ, 2);
+    lw_dense_multiply(1, 0, N, N, 2, -1, CQ, 2, TCQ, 2, 1, Q, N);
+    lw_certainty_options options = default_options();
+    adjusted a = adjust(p, _i ? "cholesky" : "dense", NULL, 0, 0, &options);
+    for (int j = 0; j < N; j++) ck_close(a.certainty->sigma[j], sqrt(Q[j + j * N]), 1e-11);
+    for (int i = 0; i < M; i++) {
+        double form = 0;
+        for (int j = 0; j < N; j++)
+            for (int k = 0; k < N; k++) form += A[i + j * M] * Q[j + k * N] * A[i + k * M];
+        ck_close(a.certainty->predicted_sigma[i], sqrt(form), 1e-10);
+        sum += a.certainty->redundancy[i];
+    }
+    ck_assert_double_eq_tol(sum, M - N + 2, 1e-10);
+    ck_assert_double_eq(a.certainty->test.degrees_of_freedom, M - N + 2);
+    adjusted_clear(&a);
+    lw_problem_free(p);
+}
+END_TEST
+
 /* Setting one reading aside: chi_square falls by w^2, its prediction error is minus the error that was
  * estimated. */
 START_TEST(test_deletion)
@@ -224,6 +262,7 @@ Suite *suite_reliability(void)
     TCase *cases = tcase_create("reliability");
     tcase_set_timeout(cases, 60);
     tcase_add_loop_test(cases, test_definitions, 0, 4);
+    tcase_add_loop_test(cases, test_conditions, 0, 2);
     tcase_add_loop_test(cases, test_deletion, 0, 4);
     tcase_add_loop_test(cases, test_largest_shift, 0, 2);
     tcase_add_loop_test(cases, test_inseparable_and_uncontrolled, 0, 2);
