@@ -138,12 +138,12 @@ lw_status lw_inspection_rank(lw_work *work, FILE *to, lw_error *error)
     if (!work->arguments->engine_named && choice.engine && !(choice.engine->abilities & LW_RANK)) {
         fprintf(to, "  %-28s not determined: a factorization would take too much (name --engine to insist)\n", "rank");
     } else {
-        work->arguments->solve.datum_free = !choice.engine || (choice.engine->abilities & LW_FREE_DATUM) != 0;
+        const lw_engine *used = work->arguments->engine_named ? lw_engine_find(work->arguments->solve.engine) : choice.engine;
+        work->arguments->solve.datum_free = !used || (used->abilities & LW_FREE_DATUM) != 0;
         status = lw_work_decompose(work, 0.0, false, error);
         if (status >= 0) put_rank(work, to);
         else if (status == LW_UNSOLVABLE) fprintf(to, "! %s\n", error->text);
     }
-    if (choice.engine)
-        fprintf(to, "Engine: %s%s: %s\n", work->arguments->engine_named ? "" : "auto would take ", choice.engine->name, choice.why);
+    if (choice.engine) fprintf(to, "Engine: auto would take %s: %s\n", choice.engine->name, choice.why);
     return status > 0 ? LW_OK : status;
 }

@@ -1,11 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "core/chance.h"
 
+#include "core/memory.h"
+
 #include "core/decimal.h"
 
 #include <gsl/gsl_cdf.h>
 #include <gsl/gsl_errno.h>
 #include <gsl/gsl_randist.h>
+#include <gsl/gsl_rng.h>
 #include <math.h>
 #include <pthread.h>
 #include <stdbool.h>
@@ -255,4 +258,61 @@ double lw_region_multiplier(double confidence, int dimension, double dof)
     if (dof > 0.0) return sqrt(dimension * lw_f_quantile(confidence, dimension, dof));
     if (dimension == 2) return sqrt(-2.0 * log1p(-confidence));
     return sqrt(lw_chi2_quantile(confidence, dimension));
+}
+
+struct lw_random {
+    gsl_rng *generator;
+};
+
+/* 32 bits, which is what the generator takes, that depend on every bit of both numbers (splitmix64: Steele, Lea & Flood,
+ * OOPSLA 2014). */
+static unsigned long seed_of(uint64_t seed, uint64_t stream)
+{
+    uint64_t z = seed + UINT64_C(0x9e3779b97f4a7c15) * (stream + 1);
+    z = (z ^ z >> 30) * UINT64_C(0xbf58476d1ce4e5b9);
+    z = (z ^ z >> 27) * UINT64_C(0x94d049bb133111eb);
+    return (unsigned long)((z ^ z >> 31) & UINT64_C(0xffffffff));
+}
+
+lw_status lw_random_new(uint64_t seed, uint64_t stream, lw_random **out, lw_error *error)
+{
+    *out = NULL;
+    gsl_error_handler_t *before = gsl_set_error_handler_off();
+    lw_random *random = LW_NEW(lw_random);
+    if (random != NULL) random->generator = gsl_rng_alloc(gsl_rng_mt19937);
+    gsl_set_error_handler(before);
+    if (random == NULL || random->generator == NULL) {
+        lw_free(random);
+        return lw_fail_memory(error, "a random stream", 8192);
+    }
+    gsl_rng_set(random->generator, seed_of(seed, stream));
+    *out = random;
+    return LW_OK;
+}
+
+void lw_random_free(lw_random *random)
+{
+    if (random == NULL) return;
+    gsl_rng_free(random->generator);
+    lw_free(random);
+}
+
+double lw_random_normal(lw_random *random)
+{
+    return gsl_ran_gaussian_ziggurat(random->generator, 1.0);
+}
+
+double lw_random_uniform(lw_random *random)
+{
+    return gsl_rng_uniform(random->generator);
+}
+
+double lw_random_sign(lw_random *random)
+{
+    return gsl_rng_get(random->generator) & 1 ? 1.0 : -1.0;
+}
+
+uint64_t lw_random_below(lw_random *random, uint64_t count)
+{
+    return (uint64_t)(gsl_rng_uniform(random->generator) * (double)count);
 }

@@ -8,8 +8,9 @@
 #include <math.h>
 #include <string.h>
 
-/* Flops per nonzero of the factor above which nested dissection is tried. */
-#define DISSECTION_FLOPS 500.0
+/* Flops per nonzero of N (half of it) above which nested dissection is tried: its own cost grows with N, what it can save with
+ * the flops of minimum degree; measured: even at 2e5 unknowns of a plane network, three times faster at 1e6. */
+#define DISSECTION_FLOPS 50000.0
 /* Right-hand sides solved at a time. */
 #define SIDES 32
 
@@ -46,7 +47,7 @@ static lw_status choose_ordering(lw_cholesky *f, cholmod_sparse *N, lw_cholesky_
     lw_status status = analyse_by(f, N, CHOLMOD_AMD, &f->L, error);
     if (status) return status;
     *size = (lw_cholesky_size){(int64_t)f->common.lnz, f->common.fl, 0, "minimum degree"};
-    if (f->common.fl <= DISSECTION_FLOPS * f->common.lnz) return LW_OK;
+    if (f->common.fl <= DISSECTION_FLOPS * (double)f->nonzeros) return LW_OK;
     cholmod_factor *other;
     status = analyse_by(f, N, CHOLMOD_METIS, &other, error);
     if (status) return status;
