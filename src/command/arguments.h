@@ -59,7 +59,7 @@ typedef struct lw_arguments {
     bool engine_named;
     /* certainty */
     lw_certainty_options certainty;
-    bool variance_named, no_sigma;
+    bool variance_named, no_sigma, sigma_named;
     const char *covariance_of, *resolution_of;
     bool search_outliers, variance_components, fail_on_reject;
     /* probe */

@@ -13,6 +13,9 @@
 #include <stdio.h>
 #include <string.h>
 
+/* An iterative engine gives sigmas unasked up to this many parameters. */
+#define SIGMA_UNASKED 2000
+
 static lw_status keep(lw_work *work, lw_status status)
 {
     if (status > 0 && (work->qualified == LW_OK || status == LW_INTERRUPTED)) work->qualified = status;
@@ -144,6 +147,12 @@ static lw_status certainty(lw_work *work, double lambda, lw_error *error)
     }
     if (lambda == 0.0 && work->estimate->rank >= 0) work->run.effective_parameters = (double)work->estimate->rank;
     options->sigma = !work->arguments->no_sigma;
+    if (!(engine && (engine->abilities & LW_DIRECT)) && !work->arguments->sigma_named && work->system->columns > SIGMA_UNASKED) {
+        options->sigma = options->reliability = false;
+        lw_log_add(&work->log, "Standard deviations and resolution were not computed: they would cost far more than the solution by %s of "
+                   "%lld parameters; --sigma noise or --sigma posterior gives them.", work->decomposition->methods->engine,
+                   (long long)work->system->columns);
+    }
     lw_status status = lw_select_parameters(work, error);
     if (status != LW_OK) return status;
     status = keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));

@@ -21,8 +21,8 @@ typedef struct lw_cholesky_size {
 } lw_cholesky_size;
 
 /** Orders and analyses the symmetric positive definite N (upper triangle stored, sorted). AMD first; nested
- * dissection when the analysis says more than about 500 flops per nonzero of the factor, and the better of
- * the two is kept. */
+ * dissection too when the analysis says more than about 25 000 flops per nonzero of N, and the better of the
+ * two is kept. */
 lw_status lw_cholesky_analyse(const lw_sparse *N, const lw_watch *watch, lw_cholesky **out,
                               lw_cholesky_size *size, lw_error *error);
 /** Numeric factorization of a matrix with the analysed pattern (again and again for a sweep). LW_UNSOLVABLE

@@ -121,7 +121,7 @@ static void certainty_cautions(lw_verdict *verdict, const lw_run *run)
         caution(verdict, certainty->test.too_high
                              ? "The global test rejects (too high): a blunder, sigmas too small, or a wrong model."
                              : "The global test rejects (too low): sigmas too large, or correlations left out.");
-    if (run->damping > 0.0)
+    if (run->damping > 0.0 && run->asked && run->asked->sigma)
         caution(verdict, "Sigma is %s; the variance factor depends on the damping.",
                 certainty->multiplied ? "scaled by an estimated variance factor that depends on the damping" : "not the whole error: damping biases the model");
 }
