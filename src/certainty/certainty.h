@@ -82,7 +82,7 @@ typedef struct lw_global_test {
     double variance_factor; /**< s0^2, NaN without redundancy */
     double probability;     /**< two-sided; NaN where it does not hold (damped, unit weights) */
     double lower, upper;    /**< acceptance range of chi_square at `confidence` */
-    bool applies;           /**< sigma stated, undamped or posterior, redundancy > 0 */
+    bool applies;           /**< sigma stated, undamped, redundancy > 0 */
     bool rejected, too_high;
     double alpha;
 } lw_global_test;
@@ -139,7 +139,7 @@ typedef struct lw_certainty {
     int samples;        /**< used for sampled sigmas */
     bool multiplied;    /**< sigmas carry s0 */
     bool shift_of_own;  /**< largest_shift was searched in the reading's own equations only */
-    double effective_parameters; /**< trace of the resolution matrix where it was made, NaN else */
+    double effective_parameters; /**< damped: trace of the exact resolution, of the estimate, or of the probed one; NaN unknown */
     lw_covariance_entry *covariance;
     int64_t covariance_count;
     lw_ellipse *ellipses;

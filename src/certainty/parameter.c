@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Standard deviations, intervals and covariances of the parameters. */
+#include "certainty/low_rank.h"
 #include "certainty/part.h"
 #include "certainty/sigma.h"
 #include "core/memory.h"
@@ -14,6 +15,29 @@ static lw_status sample(lw_certainty_work *w, lw_error *error)
     w->out->samples = samples;
     w->out->sigma_error = 1 / sqrt(2.0 * samples);
     return lw_variance_by_samples(w->cofactor, !w->noise, samples, w->watch, w->variance, error);
+}
+
+/* Nanoseconds or so that the samples would take: steps of the estimate, two products a step. */
+static double sampling_cost(const lw_certainty_work *w)
+{
+    double samples = w->options->samples > 0 ? w->options->samples : LW_SIGMA_SAMPLES;
+    return 2 * samples * (double)w->estimate->steps * (double)lw_sparse_nonzeros(w->system->problem->design);
+}
+
+/* Upper bounds from a bidiagonalization; samples where they cannot be had. */
+static lw_status bound_from_above(lw_certainty_work *w, lw_error *error)
+{
+    lw_low_rank info;
+    lw_status status = lw_variance_low_rank(w->cofactor, 0, w->watch, w->variance, &info, error);
+    if (status == LW_QUALIFIED) return sample(w, error);
+    if (status != LW_OK) return status;
+    w->kind = LW_SIGMA_UPPER_BOUND;
+    return lw_log_add(lw_watch_log(w->watch),
+                      "The standard deviations are upper bounds (prior covariance less an update of rank %lld): samples would take "
+                      "too long. They are near the truth from about 1.25 times the effective parameters on; here %lld steps saw "
+                      "%.0f of them%s.",
+                      (long long)info.steps, (long long)info.steps, info.effective,
+                      info.complete ? "" : ", as many as --memory holds: they may be much too large");
 }
 
 /* Cost (columns x nonzeros) of refined variances that a sparse factor may take: about a tenth of a second.
@@ -50,6 +74,8 @@ lw_status lw_parameter_columns(lw_certainty_work *w, lw_error *error)
         return lw_variance_of_noise(w->cofactor, w->watch, w->variance, error);
     }
     if (w->noise || w->cofactor->kind == LW_COFACTOR_NONE) {
+        if (!w->noise && lw_low_rank_applies(w->cofactor) && sampling_cost(w) > LW_SIGMA_WORK)
+            return bound_from_above(w, error);
         if (w->cofactor->decomposition->methods->solve_many) return sample(w, error);
         lw_free(w->variance);
         w->variance = NULL;

@@ -7,6 +7,8 @@
 #include <math.h>
 #include <string.h>
 
+#define PANEL 48
+
 /* Legend: a supernode s has `width` columns and `below` rows under its diagonal block; ld = width + below. */
 typedef struct work {
     double *y;      /* below x width */
@@ -112,9 +114,11 @@ static lw_status invert_supernode(const lw_factor_view *v, const int64_t *supern
     }
     lw_status status = lw_dense_invert_lower(width, l, ld, error);
     if (status != LW_OK) return status;
-    for (int64_t j = 1; j < width; j++)
-        for (int64_t i = 0; i < j; i++) l[i + j * ld] = l[j + i * ld];
-    if (below > 0) lw_dense_multiply(1, 0, width, width, below, -1, w->y, below, l + width, ld, 1, l, ld);
+    for (int64_t j = 0; j < width && below > 0; j += PANEL) { /* the lower triangle by panels: half the work */
+        int64_t panel = width - j < PANEL ? width - j : PANEL;
+        lw_dense_multiply(1, 0, width - j, panel, below, -1, w->y + j * below, below, l + width + j * ld, ld, 1,
+                          l + j + j * ld, ld);
+    }
     for (int64_t j = 1; j < width; j++)
         for (int64_t i = 0; i < j; i++) l[i + j * ld] = l[j + i * ld];
     return LW_OK;

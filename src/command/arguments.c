@@ -86,11 +86,39 @@ static char *words_of(int argc, char **argv)
     return text;
 }
 
+/* Every long option must be written out: an abbreviation that is taken for another option would be silent. */
+static lw_status check_names(int argc, char **argv, unsigned groups, lw_error *error)
+{
+    for (int k = 1; k < argc && strcmp(argv[k], "--") != 0; k++) {
+        if (strncmp(argv[k], "--", 2) != 0) continue;
+        const char *name = argv[k] + 2;
+        size_t length = strcspn(name, "=");
+        bool known = (length == 4 && strncmp(name, "help", 4) == 0) || (length == 5 && strncmp(name, "usage", 5) == 0);
+        const lw_option *option, *near = NULL;
+        for (int i = 0; !known && (option = lw_option_at(i)); i++) {
+            if (!(option->groups & groups)) continue;
+            known = strlen(option->name) == length && strncmp(option->name, name, length) == 0;
+            if (strncmp(option->name, name, length < 4 ? length : 4) == 0) near = option;
+        }
+        if (!known)
+            return lw_fail(error, LW_BAD_USAGE, "leastwise %s: found the unknown option --%.*s%s%s%s; leastwise %s --help lists the options",
+                           argv[0], (int)length, name, near ? ", did you mean --" : "", near ? near->name : "", near ? "?" : "", argv[0]);
+        const lw_option *exact = NULL;
+        for (int i = 0; (option = lw_option_at(i)); i++)
+            if ((option->groups & groups) && strlen(option->name) == length && strncmp(option->name, name, length) == 0) exact = option;
+        if (exact && exact->argument && name[length] != '=') k++; /* its value is the next word */
+    }
+    return LW_OK;
+}
+
 lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *operands, unsigned groups, lw_arguments *out,
                             lw_error *error)
 {
     struct argp_option options[MOST_OPTIONS] = {{0}};
     int count = 0;
+    make_defaults(out);
+    lw_status named = check_names(argc, argv, groups, error);
+    if (named != LW_OK) return named;
     for (int i = 0; lw_option_at(i) && count < MOST_OPTIONS - 1; i++) {
         const lw_option *option = lw_option_at(i);
         if (!(option->groups & groups)) continue;
@@ -99,7 +127,6 @@ lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *
                                                 .arg = option->argument,
                                                 .doc = option->words};
     }
-    make_defaults(out);
     out->command = argv[0];
     out->command_line = words_of(argc, argv);
     if (!out->command_line) return lw_fail_memory(error, "the command line", 1);

@@ -18,7 +18,13 @@ static const lw_choice *written_choice(const lw_curve *curve)
 
 static lw_status estimate_choice(lw_work *work, lw_error *error)
 {
+    const lw_arguments *arguments = work->arguments;
     const lw_choice *choice = written_choice(work->curve);
+    if (arguments->damping == LW_DAMPING_VALUE) return lw_work_estimate(work, arguments->damping_value, "value", error);
+    if (arguments->damping > LW_DAMPING_VALUE) {
+        lw_status status = lw_work_choice(work, &choice, error);
+        if (status != LW_OK) return status;
+    }
     if (choice) return lw_work_estimate(work, choice->damping, lw_criterion_name(choice->criterion), error);
     lw_log_add(&work->log, "No criterion chose a damping: there is no parameters.csv. Pick one from the curve and solve with --damping.");
     work->run.damping_chosen_by = "none";

@@ -8,13 +8,13 @@
 
 static void put_count(FILE *to, const char *label, int64_t count)
 {
-    fprintf(to, "  %-28s %lld\n", label, (long long)count);
+    fprintf(to, "  %-32s %lld\n", label, (long long)count);
 }
 
 static void put_range(FILE *to, const char *label, const lw_range *range, const char *unit)
 {
     if (range->count == 0) return;
-    fprintf(to, "  %-28s %.4g to %.4g, median %.4g%s%s\n", label, range->smallest, range->largest, range->median,
+    fprintf(to, "  %-32s %.4g to %.4g, median %.4g%s%s\n", label, range->smallest, range->largest, range->median,
             unit && *unit ? " " : "", unit ? unit : "");
 }
 
@@ -45,7 +45,7 @@ static void put_weakest(const lw_work *work, FILE *to)
     fprintf(to, "Weakest parameters (observations that touch them, sum of absolute coefficients):\n");
     for (int k = 0; k < check->weakest_count; k++) {
         int64_t j = check->weakest[k];
-        fprintf(to, "  %-28s %lld, %.4g\n", lw_ids_name(work->problem->parameters, j), (long long)check->hits[j], check->coverage[j]);
+        fprintf(to, "  %-32s %lld, %.4g\n", lw_ids_name(work->problem->parameters, j), (long long)check->hits[j], check->coverage[j]);
     }
 }
 
@@ -73,16 +73,16 @@ void lw_inspection_facts(const lw_work *work, FILE *to)
     if (check->weighted_priors) put_count(to, "weighted priors", check->weighted_priors);
     if (check->conditions) put_count(to, "exact conditions", check->conditions);
     put_count(to, "nonzeros", check->nonzeros);
-    put_count(to, "degrees of freedom", check->degrees_of_freedom);
+    put_count(to, "degrees of freedom at full rank", check->degrees_of_freedom);
     put_components(work, to);
     if (check->hit_range.count)
-        fprintf(to, "  %-28s %.0f to %.0f, median %.0f\n", "observations per parameter", check->hit_range.smallest,
+        fprintf(to, "  %-32s %.0f to %.0f, median %.0f\n", "observations per parameter", check->hit_range.smallest,
                 check->hit_range.largest, check->hit_range.median);
     put_range(to, "sizes of coefficients", &check->coefficient_range, "");
     put_range(to, "sigmas", &check->sigma_range, problem->value_unit);
     put_range(to, "sizes of values", &check->value_range, problem->value_unit);
     put_weakest(work, to);
-    put_named(to, "Observations whose equation has no free parameter", problem->observations, check->zero_rows, check->zero_row_count);
+    put_named(to, "Observations with no equation, or none with a free parameter", problem->observations, check->zero_rows, check->zero_row_count);
     put_named(to, "Parameters that no equation, prior or penalty reaches", problem->parameters, check->zero_columns,
               check->zero_column_count);
     put_named(to, "Parameters touched by one observation only", problem->parameters, check->single_hit, check->single_hit_count);
@@ -113,18 +113,21 @@ static void put_rank(const lw_work *work, FILE *to)
     const lw_null_space *space = methods->null_space ? methods->null_space(work->decomposition) : NULL;
     int64_t rank = methods->rank ? methods->rank(work->decomposition) : -1;
     double rcond = methods->rcond ? methods->rcond(work->decomposition) : (double)NAN;
-    if (rank < 0) fprintf(to, "  %-28s not determined by an iterative engine\n", "rank");
-    else put_count(to, "rank", rank);
+    if (rank < 0) fprintf(to, "  %-32s not determined by an iterative engine\n", "rank");
+    else {
+        put_count(to, "rank", rank);
+        put_count(to, "degrees of freedom", work->check.degrees_of_freedom + work->system->columns - rank);
+    }
     if (space && space->defect > 0) {
         put_count(to, "datum defect", space->defect);
         for (int64_t k = 0; k < space->defect && k < MOST_NAMED; k++)
             put_null_vector(work, space->basis + k * space->columns, k, to);
-        fprintf(to, "    To cure it: hold one parameter a defect (`fixed`), give `prior_sigma`, observe what is missing, damp, or "
-                    "solve with --datum free.\n");
+        fprintf(to, "    To cure it: damp (--damping, sweep) what the data cannot see; of a network hold one parameter a defect (`fixed`), "
+                    "give `prior_sigma`, observe what is missing, or solve with --datum free.\n");
     } else if (rank >= 0) {
         put_count(to, "datum defect", 0);
     }
-    if (!isnan(rcond)) fprintf(to, "  %-28s about %.1e\n", "condition of scaled matrix", rcond > 0.0 ? 1.0 / rcond : HUGE_VAL);
+    if (!isnan(rcond)) fprintf(to, "  %-32s about %.1e\n", "condition of scaled matrix", rcond > 0.0 ? 1.0 / rcond : HUGE_VAL);
 }
 
 lw_status lw_inspection_rank(lw_work *work, FILE *to, lw_error *error)
@@ -136,7 +139,7 @@ lw_status lw_inspection_rank(lw_work *work, FILE *to, lw_error *error)
     if (status < 0) return status;
     fprintf(to, "Rank and datum\n");
     if (!work->arguments->engine_named && choice.engine && !(choice.engine->abilities & LW_RANK)) {
-        fprintf(to, "  %-28s not determined: a factorization would take too much (name --engine to insist)\n", "rank");
+        fprintf(to, "  %-32s not determined: a factorization would take too much (name --engine to insist)\n", "rank");
     } else {
         const lw_engine *used = work->arguments->engine_named ? lw_engine_find(work->arguments->solve.engine) : choice.engine;
         work->arguments->solve.datum_free = !used || (used->abilities & LW_FREE_DATUM) != 0;

@@ -72,9 +72,9 @@ SET_SWITCH(fail_on_reject)
 const lw_option lw_certainty_option_table[] = {
     {"variance", "KIND", 0, LW_TAKES_CERTAINTY, "variance factor: stated (1; default where sigma was given) or estimated (s0^2)", set_variance},
     {"confidence", "P", 0, LW_TAKES_CERTAINTY, "of intervals, ellipses and the global test (default 0.95)", set_confidence},
-    {"alpha", "P", 0, LW_TAKES_CERTAINTY, "level of the test of a single reading (default 0.001)", set_alpha},
+    {"alpha", "P", 0, LW_TAKES_CERTAINTY, "level of the test of a single reading (default 0.001); the outlier search tests the whole family at 1 - confidence", set_alpha},
     {"power", "P", 0, LW_TAKES_CERTAINTY, "power of the test of a single reading (default 0.80)", set_power},
-    {"sigma", "MEANING", 0, LW_TAKES_CERTAINTY, "with damping: noise (default: data noise carried through, bias not included), posterior (the penalty is a true prior), none; an iterative engine on more than 2000 parameters gives sigmas only where this is named", set_sigma},
+    {"sigma", "MEANING", 0, LW_TAKES_CERTAINTY, "with damping: noise (default: data noise carried through, bias not included), posterior (the penalty is a true prior), none (nor resolution); an iterative engine on more than 2000 parameters gives sigmas only where this is named", set_sigma},
     {"covariance-of", "FILE|all", 0, LW_TAKES_CERTAINTY, "write parameter_covariance.csv for the parameters listed in FILE, one a line", set_covariance_of},
     {"resolution-of", "LIST", 0, LW_TAKES_CERTAINTY, "write resolution.csv: rows of the resolution matrix for these parameters, a comma list", set_resolution_of},
     {"search-outliers", NULL, 0, LW_TAKES_NETWORK, "set the most significant reading aside, solve again, repeat; every step in outliers.csv", set_search_outliers},

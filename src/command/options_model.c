@@ -204,8 +204,9 @@ static lw_status set_datum(lw_arguments *arguments, const char *value, lw_error 
 
 #define SOLVING (LW_TAKES_MODEL)
 const lw_option lw_model_options[] = {
-    {"damping", "VALUE|CRITERION", 0, SOLVING,
-     "lambda of the objective (never its square), none (default), or a criterion that chooses it: corner, gcv, discrepancy, risk", set_damping},
+    {"damping", "VALUE|CRITERION", 0, SOLVING | LW_TAKES_SWEEP,
+     "lambda of the objective (never its square), none (default), or a criterion that chooses it: corner, gcv, discrepancy, risk; "
+     "sweep: which model is written (default: what the criteria choose)", set_damping},
     {"dampings", "FROM:TO:COUNT|LIST", 0, SOLVING | LW_TAKES_SWEEP, "dampings of the sweep: logarithmic, or a comma list (default 60 that the problem determines)", set_dampings},
     {"criteria", "LIST", 0, LW_TAKES_SWEEP, "which of corner,gcv,discrepancy,risk (default: all that apply)", set_criteria},
     {"prefer", "KIND", 0, SOLVING | LW_TAKES_SWEEP, "what the penalty prefers: smallest (default), flattest, smoothest, own", set_prefer},

@@ -24,7 +24,7 @@ static void set_range(struct libscols_line *line, size_t column, double from, do
 
 void lw_plot_choices(const lw_curve *curve, FILE *to)
 {
-    static const char *const head[] = {"CRITERION", "DAMPING", "WITHIN 5 %", "MISFIT", "SIZE", "EFFECTIVE", ""};
+    static const char *const head[] = {"CRITERION", "DAMPING", "WITHIN 5 %", "MISFIT", "SIZE", "EFFECTIVE PARAMETERS", "NOTE"};
     struct libscols_table *table = scols_new_table();
     if (!table) return;
     for (size_t c = 0; c < sizeof head / sizeof *head; c++)

@@ -48,6 +48,8 @@ lw_status lw_work_decompose(lw_work *work, double lambda, bool sweep, lw_error *
 /** The damping asked for: as given, or chosen by a sweep, whose decomposition then also gives the estimate. LW_UNSOLVABLE when
  *  the criterion picks none. */
 lw_status lw_work_damping(lw_work *work, double *lambda, lw_error *error);
+/** What the curve says of the criterion that --damping names; LW_UNSOLVABLE, with the reason, when it picks none. */
+lw_status lw_work_choice(lw_work *work, const lw_choice **out, lw_error *error);
 /** Sweeps and fills curve; LW_OK, or a positive status that is also kept in `qualified`. */
 lw_status lw_work_sweep(lw_work *work, lw_error *error);
 /** The estimate at lambda with everything that goes with it: bounds, robust weights, outliers, certainty. */

@@ -6,6 +6,7 @@
 #include "certainty/variance_components.h"
 #include "core/decimal.h"
 #include "core/memory.h"
+#include "matrix/vector.h"
 #include "solve/bounds.h"
 #include "solve/robust.h"
 
@@ -15,6 +16,8 @@
 
 /* An iterative engine gives sigmas unasked up to this many parameters. */
 #define SIGMA_UNASKED 2000
+/* Reciprocal condition below which a direct solution is told to hang on rounding and small coefficients. */
+#define NEARLY_SINGULAR 1e-7
 
 static lw_status keep(lw_work *work, lw_status status)
 {
@@ -40,6 +43,30 @@ static const char *misfit_name(lw_misfit_kind misfit)
     return misfit == LW_MISFIT_HUBER ? "huber" : "l1";
 }
 
+/* Norms of the estimate with every reading at its stated weight: an l1 estimate is made of few of them. */
+static lw_status measure_plainly(lw_work *work, lw_error *error)
+{
+    lw_free(work->row_factor);
+    work->row_factor = NULL;
+    if (work->outliers) {
+        work->row_factor = LW_NEW_ARRAY(double, work->system->rows);
+        if (!work->row_factor) return lw_fail_memory(error, "weights", (size_t)work->system->rows * sizeof(double));
+        memcpy(work->row_factor, work->outliers->row_factor, (size_t)work->system->rows * sizeof(double));
+    }
+    lw_status status = lw_work_system(work, error);
+    if (status != LW_OK) return status;
+    int64_t rows = work->system->rows;
+    double *whitened = LW_NEW_ARRAY(double, rows + 1);
+    if (!whitened) return lw_fail_memory(error, "residuals", (size_t)rows * sizeof(double));
+    memcpy(whitened, work->estimate->residual, (size_t)rows * sizeof(double));
+    lw_system_whiten(work->system, 1, whitened);
+    work->estimate->point.misfit = lw_norm(work->system->observations, whitened, work->team);
+    work->estimate->point.chi_square = lw_dot(rows, whitened, whitened, work->team);
+    work->estimate->chi_square_low = 0.0;
+    lw_free(whitened);
+    return LW_OK;
+}
+
 /* The robust estimate, its weights, and the system of which it is the least squares solution. */
 static lw_status reweight(lw_work *work, double lambda, lw_error *error)
 {
@@ -55,10 +82,14 @@ static lw_status reweight(lw_work *work, double lambda, lw_error *error)
     work->row_factor = robust->row_factor;
     robust->estimate = NULL;
     robust->weight = robust->row_factor = NULL;
-    lw_log_add(&work->log, "The misfit is %s (%s, %lld iterations, scale %.6g): chi-square and the standard deviations count the "
-               "readings with their final weights.", misfit_name(options.misfit), robust->way, (long long)robust->iterations, robust->scale);
+    bool huber = options.misfit == LW_MISFIT_HUBER;
+    lw_log_add(&work->log, "The misfit is %s (%s, %lld iterations, scale %.6g): %s", misfit_name(options.misfit), robust->way,
+               (long long)robust->iterations, robust->scale,
+               huber ? "chi-square and the standard deviations count the readings with their final weights, so the global test does not hold."
+                     : "the estimate meets some readings exactly, and there are no standard deviations.");
     lw_robust_free(robust);
-    return lw_work_system(work, error);
+    status = lw_work_system(work, error);
+    return status == LW_OK && !huber ? measure_plainly(work, error) : status;
 }
 
 static bool has_bounds(const lw_problem *problem)
@@ -105,8 +136,9 @@ static lw_status plain(lw_work *work, double lambda, lw_error *error)
     if (status >= 0) status = keep(work, status);
     if (status == LW_OK)
         status = keep(work, work->decomposition->methods->estimate(work->decomposition, lambda, &work->watch, &work->estimate, error));
-    if (work->qualified == LW_NOT_CONVERGED && work->estimate)
-        lw_log_add(&work->log, "Not converged: %s.", lw_stop_words(work->estimate->stop));
+    if (status == LW_OK && work->estimate->rcond < NEARLY_SINGULAR)
+        lw_log_add(&work->log, "The equations are nearly singular (condition of the scaled matrix about %.0e): some parameters, or sums of "
+                   "them, are hardly determined, and their sigmas say so.", 1.0 / work->estimate->rcond);
     return status;
 }
 
@@ -156,6 +188,10 @@ static lw_status certainty(lw_work *work, double lambda, lw_error *error)
     lw_status status = lw_select_parameters(work, error);
     if (status != LW_OK) return status;
     status = keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));
+    if (status == LW_OK && work->weight) { /* the down-weighted chi-square has no chi-square distribution */
+        work->certainty->test.applies = work->certainty->test.rejected = false;
+        work->certainty->test.probability = LW_UNKNOWN;
+    }
     return status == LW_OK && work->arguments->variance_components ? estimate_components(work, error) : status;
 }
 
@@ -184,7 +220,6 @@ lw_status lw_work_estimate(lw_work *work, double lambda, const char *chosen_by, 
     work->run.seconds.solve += lw_work_lap(work);
     work->run.interrupted = work->qualified == LW_INTERRUPTED;
     bool certain = !bounded && work->arguments->misfit != LW_MISFIT_L1; /* an l1 estimate meets some readings and uses no redundancy */
-    if (work->arguments->misfit == LW_MISFIT_L1) lw_log_add(&work->log, "No standard deviations are given for an l1 estimate.");
     if (status == LW_OK && certain && !work->run.interrupted) {
         if (!work->decomposition) status = keep(work, lw_work_decompose(work, lambda, false, error));
         if (status == LW_OK) status = certainty(work, lambda, error);

@@ -32,6 +32,18 @@ static lw_status sweep_options(lw_work *work, lw_sweep_options *out, double **gr
     return LW_OK;
 }
 
+/* What a reader of the curve should know of it. */
+static void note_sweep(lw_work *work)
+{
+    const lw_problem *problem = work->problem;
+    const lw_curve *curve = work->curve;
+    if (problem->lower || problem->upper)
+        lw_log_add(&work->log, "The curve and the criteria leave the bounds out of account: they choose the damping of the unbounded problem.");
+    double columns = (double)work->system->columns;
+    if (curve->count > 0 && columns - curve->row[0].point.effective_parameters < 0.01)
+        lw_log_add(&work->log, "The data determine all parameters without damping: solve without it, unless the penalty is a true prior.");
+}
+
 lw_status lw_work_sweep(lw_work *work, lw_error *error)
 {
     lw_sweep_options options;
@@ -49,6 +61,7 @@ lw_status lw_work_sweep(lw_work *work, lw_error *error)
     if (status > 0 && work->qualified == LW_OK) work->qualified = status;
     work->run.curve = work->curve;
     work->run.interrupted = status == LW_INTERRUPTED;
+    if (status >= 0) note_sweep(work);
     work->run.seconds.solve += lw_work_lap(work);
     lw_free(grid);
     return status > 0 ? LW_OK : status;
@@ -64,22 +77,28 @@ static lw_criterion criterion_of(lw_damping_choice choice)
     }
 }
 
+lw_status lw_work_choice(lw_work *work, const lw_choice **out, lw_error *error)
+{
+    lw_criterion criterion = criterion_of(work->arguments->damping);
+    const lw_choice *choice = *out = lw_curve_choice(work->curve, criterion);
+    if (!choice || isnan(choice->damping))
+        return lw_fail(error, LW_UNSOLVABLE, "--damping %s: %s", lw_criterion_name(criterion),
+                       choice ? choice->warning : "this criterion was not asked for by --criteria");
+    return LW_OK;
+}
+
 lw_status lw_work_damping(lw_work *work, double *lambda, lw_error *error)
 {
     const lw_arguments *arguments = work->arguments;
     *lambda = arguments->damping == LW_DAMPING_VALUE ? arguments->damping_value : 0.0;
     if (arguments->damping <= LW_DAMPING_VALUE) return LW_OK;
-    lw_criterion criterion = criterion_of(arguments->damping);
-    work->arguments->criteria = 1u << criterion;
+    work->arguments->criteria = 1u << criterion_of(arguments->damping);
+    const lw_choice *choice;
     lw_status status = lw_work_sweep(work, error);
-    if (status != LW_OK) return status;
-    const lw_choice *choice = lw_curve_choice(work->curve, criterion);
-    if (!choice || isnan(choice->damping))
-        return lw_fail(error, LW_UNSOLVABLE, "--damping %s: %s", lw_criterion_name(criterion),
-                       choice ? choice->warning : "the sweep gave no choice");
-    if (choice->warning[0]) lw_log_add(&work->log, "--damping %s: %s", lw_criterion_name(criterion), choice->warning);
-    *lambda = choice->damping;
-    return LW_OK;
+    if (status == LW_OK && work->qualified == LW_INTERRUPTED) return LW_OK;
+    if (status == LW_OK) status = lw_work_choice(work, &choice, error);
+    if (status == LW_OK) *lambda = choice->damping;
+    return status;
 }
 
 /* Models of more numbers than this are not kept. */

@@ -2,7 +2,9 @@
 #include "core/status.h"
 
 #include <stdarg.h>
+#include <stdbool.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 lw_status lw_fail(lw_error *error, lw_status status, const char *format, ...)
@@ -68,4 +70,51 @@ const char *lw_status_name(lw_status status)
         return "sizes that do not match";
     }
     return "unknown status";
+}
+
+/* Where a message line points: the length of FILE, then line and column; false when it names no place. */
+static bool find_place(const char *text, size_t *file, long *line, long *column)
+{
+    for (const char *colon = strchr(text, ':'); colon && colon < strchrnul(text, '\n'); colon = strchr(colon + 1, ':')) {
+        char *end, *last;
+        *line = strtol(colon + 1, &end, 10);
+        if (end == colon + 1 || *end != ':') continue;
+        *column = strtol(end + 1, &last, 10);
+        if (last == end + 1 || *last != ':') continue;
+        *file = (size_t)(colon - text);
+        return true;
+    }
+    return false;
+}
+
+static bool stands_after(const char *a, const char *b)
+{
+    size_t file_a, file_b;
+    long line_a, line_b, column_a, column_b;
+    if (!find_place(a, &file_a, &line_a, &column_a) || !find_place(b, &file_b, &line_b, &column_b)) return false;
+    if (file_a != file_b || strncmp(a, b, file_a) != 0) return false;
+    return line_a > line_b || (line_a == line_b && column_a > column_b);
+}
+
+void lw_error_order(lw_error *error)
+{
+    char *line[LW_MOST_FAULTS + 2];
+    int count = 0;
+    char copy[LW_ERROR_TEXT];
+    if (error == NULL || error->faults < 2) return;
+    memcpy(copy, error->text, sizeof copy);
+    for (char *next = copy; next && count < LW_MOST_FAULTS + 2;) {
+        line[count++] = next;
+        next = strchr(next, '\n');
+        if (next) *next++ = '\0';
+    }
+    for (int i = 1; i < count; i++) /* insertion: at most twenty, and stable */
+        for (int k = i; k > 0 && stands_after(line[k - 1], line[k]); k--) {
+            char *swap = line[k];
+            line[k] = line[k - 1];
+            line[k - 1] = swap;
+        }
+    size_t used = 0;
+    for (int i = 0; i < count; i++)
+        used += (size_t)snprintf(error->text + used, sizeof error->text - used, "%s%s", i ? "\n" : "", line[i]);
 }

@@ -39,6 +39,10 @@ lw_status lw_fail(lw_error *error, lw_status status, const char *format, ...) __
 /** Adds one more line (up to LW_MOST_FAULTS; later ones are counted only) and returns `status`. */
 lw_status lw_fail_also(lw_error *error, lw_status status, const char *format, ...) __attribute__((format(printf, 3, 4)));
 
+/** Puts the lines FILE:line:column: ... of each file into the order of the lines (faults that are found late come first where they
+ *  stand first). Lines without a place keep theirs. */
+void lw_error_order(lw_error *error);
+
 /** LW_NO_MEMORY with "out of memory: WHAT needs N bytes". */
 lw_status lw_fail_memory(lw_error *error, const char *what, size_t bytes);
 

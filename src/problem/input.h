@@ -59,6 +59,10 @@ void lw_reading_fault(lw_reading *reading, const char *format, ...) __attribute_
 const char *lw_show(const lw_field *field, char text[LW_SHOWN]);
 const char *lw_show_id(const lw_ids *ids, int64_t i, char text[LW_SHOWN]);
 
+/** Beyond these sizes the quotient of a reading and its sigma, or its square, is no double any more. */
+#define LW_LARGEST_NUMBER 1e75
+#define LW_LEAST_SIGMA 1e-75
+
 typedef enum lw_demand { LW_ANY_NUMBER, LW_POSITIVE, LW_NOT_NEGATIVE } lw_demand;
 /** The number of field c of row `row`; false, *out = NaN and a fault when it is none or not what is demanded.
  */

@@ -20,19 +20,22 @@ lw_status lw_linear_rows_open(lw_reading *reading, const char *path, lw_linear_r
 /* The value of a condition stands on its first row; later rows repeat it or leave it blank. */
 static lw_status add_value(lw_linear_rows *rows, int64_t row, const lw_field *field, int64_t i)
 {
-    lw_decimal value;
+    lw_decimal value = {(double)NAN, (double)row}; /* no value yet; low keeps the condition's first row */
     if (i == rows->values.count) {
-        (void)lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value);
+        if (field->length > 0) (void)lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value);
         return lw_numbers_add(&rows->values, value, rows->input.reading->error);
     }
     if (field->length == 0 || !lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value))
         return LW_OK;
-    if ((value.high == rows->values.high[i] && value.low == rows->values.low[i]) ||
-        isnan(rows->values.high[i]))
+    if (isnan(rows->values.high[i])) {
+        rows->values.high[i] = value.high;
+        rows->values.low[i] = value.low;
         return LW_OK;
+    }
+    if (value.high == rows->values.high[i] && value.low == rows->values.low[i]) return LW_OK;
     char shown[LW_SHOWN];
     lw_input_refuse(&rows->input, row, rows->value,
-                    "a blank field, or the value on the first row of the condition", "%s",
+                    "a blank field, or the value that the condition has already", "%s",
                     lw_show(field, shown));
     return LW_OK;
 }
@@ -78,6 +81,15 @@ static lw_status pad(lw_linear_rows *rows, int64_t first_row)
     return status;
 }
 
+/* Conditions that no row gave a value. */
+static void refuse_without_value(lw_linear_rows *rows)
+{
+    for (int64_t i = 0; rows->with_value && i < rows->values.count; i++)
+        if (isnan(rows->values.high[i]))
+            lw_input_refuse(&rows->input, (int64_t)rows->values.low[i], rows->value, "the value of the condition on one of its rows",
+                            "an empty field");
+}
+
 lw_status lw_linear_rows_read(lw_linear_rows *rows)
 {
     lw_csv_batch batch;
@@ -90,6 +102,7 @@ lw_status lw_linear_rows_read(lw_linear_rows *rows)
         for (int r = 0; r < batch.rows && status == LW_OK; r++)
             status = add_row(rows, batch.first_row + r, batch.fields + (int64_t)r * batch.columns);
     }
+    if (status == LW_OK && !lw_input_faulty(&rows->input)) refuse_without_value(rows);
     if (status == LW_OK && !lw_input_faulty(&rows->input) && lw_ids_count(rows->ids) == 0)
         lw_input_refuse_empty(&rows->input, "one coefficient at least");
     return status;

@@ -6,6 +6,7 @@
 #include <float.h>
 #include <math.h>
 #include <stdlib.h>
+#include <string.h>
 
 #define KEPT_BITS 24  /* of a ratio, for the hash: rounding of the ratio hardly ever reaches the 24th bit */
 #define MOST_KINDS 16 /* different vectors with one hash that are compared with; more are forged */
@@ -23,19 +24,15 @@ static uint64_t mix(uint64_t z)
     return z ^ (z >> 31);
 }
 
-/* What entry `index` adds to the hash of its vector; sums do not depend on order. */
+/* What entry `index` adds to the hash of its vector; sums do not depend on order. The ratio is rounded to KEPT_BITS on its bits
+ * as they stand: a carry out of the fraction moves the exponent up, as it should. */
 static uint64_t entry_hash(int64_t index, double ratio)
 {
-    int exponent;
-    double fraction = frexp(ratio, &exponent);
-    int64_t kept = (int64_t)nearbyint(ldexp(fraction, KEPT_BITS));
-    if (kept == (INT64_C(1) << KEPT_BITS) ||
-        kept == -(INT64_C(1) << KEPT_BITS)) { /* rounded up to a power of two */
-        kept /= 2;
-        exponent++;
-    }
-    return mix(mix((uint64_t)index + 1) + (uint64_t)kept * UINT64_C(0x9e3779b97f4a7c15) +
-               (uint64_t)(int64_t)exponent);
+    uint64_t bits;
+    memcpy(&bits, &ratio, sizeof bits);
+    uint64_t dropped = DBL_MANT_DIG - KEPT_BITS, sign = bits >> 63, size = bits & (UINT64_MAX >> 1);
+    uint64_t kept = (size + (UINT64_C(1) << (dropped - 1))) >> dropped;
+    return mix(mix((uint64_t)index + 1) + (2 * kept + sign) * UINT64_C(0x9e3779b97f4a7c15));
 }
 
 static int compare_keys(const void *a, const void *b)

@@ -4,6 +4,7 @@
 #include "core/memory.h"
 
 #include <math.h>
+#include <stdlib.h>
 
 static void swap(double *a, double *b)
 {
@@ -47,11 +48,50 @@ static void select_place(int64_t count, double *v, int64_t k)
     }
 }
 
+static int by_value(const void *a, const void *b)
+{
+    double x = *(const double *)a, y = *(const double *)b;
+    return (x > y) - (x < y);
+}
+
+/* Keeps of many values those between two places of a sorted sample that most likely enclose the middle, when they do: the
+ * passes have no branch that depends on a value. *before: how many smaller ones were left out. Values that are left out are lost.
+ * Source: Floyd & Rivest, CACM 18(3):165-172, 1975. */
+static int64_t narrow(int64_t count, double *v, int64_t middle, int64_t *before)
+{
+    enum { SAMPLE = 1024, MARGIN = 96 };
+    double sample[SAMPLE];
+    uint64_t state = 1;
+    *before = 0;
+    if (count < 64 * SAMPLE) return count;
+    for (int k = 0; k < SAMPLE; k++) {
+        state = state * UINT64_C(6364136223846793005) + UINT64_C(1442695040888963407);
+        sample[k] = v[(int64_t)((state >> 16) % (uint64_t)count)];
+    }
+    qsort(sample, SAMPLE, sizeof *sample, by_value);
+    double low = sample[SAMPLE / 2 - MARGIN], high = sample[SAMPLE / 2 + MARGIN];
+    int64_t less = 0, most = 0, kept = 0;
+    for (int64_t i = 0; i < count; i++) {
+        less += v[i] < low;
+        most += v[i] <= high;
+    }
+    if (less >= middle || most <= middle) return count;
+    for (int64_t i = 0; i < count; i++) {
+        double a = v[i];
+        v[kept] = a;
+        kept += (a >= low) & (a <= high);
+    }
+    *before = less;
+    return kept;
+}
+
 double lw_median(int64_t count, double *values)
 {
-    int64_t middle = count / 2;
+    int64_t middle = count / 2, before, odd = count % 2;
+    count = narrow(count, values, middle, &before);
+    middle -= before;
     select_place(count, values, middle);
-    if (count % 2 == 1) return values[middle];
+    if (odd) return values[middle];
     double below = values[0];
     for (int64_t i = 1; i < middle; i++) below = fmax(below, values[i]);
     return below + 0.5 * (values[middle] - below);

@@ -179,6 +179,7 @@ lw_status lw_problem_read(const char *folder, const lw_read_options *options, co
         *out = reading.problem;
     else
         lw_problem_free(reading.problem);
+    lw_error_order(reading.error);
     if (status != LW_OK) reading.error->status = status;
     return status;
 }

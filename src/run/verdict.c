@@ -56,6 +56,7 @@ static const char *fit_words(const lw_run *run)
 {
     const lw_global_test *test = &run->certainty->test;
     if (test->degrees_of_freedom <= 0.0) return "there is no redundancy: nothing checks the readings";
+    if (run->weight) return "large residuals were down-weighted, so the fit is not tested";
     if (!test->applies) return "sigma was not stated, so the fit cannot be tested";
     if (!test->rejected) return "the readings agree with their stated sigmas";
     return test->too_high ? "the readings disagree by more than their stated sigmas allow"
@@ -66,7 +67,10 @@ static void network_numbers(lw_verdict *verdict, const lw_run *run)
 {
     const lw_certainty *certainty = run->certainty;
     char text[96], name[LW_ROW_NAME];
-    if (!isnan(certainty->test.probability))
+    if (!isnan(certainty->test.probability) && certainty->test.probability < 1e-300)
+        number(verdict, 0, "chi-square", "%.4g on %.0f degrees of freedom, two-sided probability < 1e-300",
+               certainty->test.chi_square, certainty->test.degrees_of_freedom);
+    else if (!isnan(certainty->test.probability))
         number(verdict, 0, "chi-square", "%.4g on %.0f degrees of freedom, two-sided probability %.3g",
                certainty->test.chi_square, certainty->test.degrees_of_freedom, certainty->test.probability);
     else number(verdict, 0, "chi-square", "%.4g on %.0f degrees of freedom", certainty->test.chi_square, certainty->test.degrees_of_freedom);
@@ -99,7 +103,7 @@ static void damped_numbers(lw_verdict *verdict, const lw_run *run)
     number(verdict, 3, "variance reduction", "%.2f %%", 100.0 * run->variance_reduction);
     if (!isnan(run->effective_parameters))
         number(verdict, 4, "effective parameters", "%.1f of %lld", run->effective_parameters, (long long)run->system->columns);
-    else if (!isnan(point->error_bound)) number(verdict, 4, "error bound of the model", "%.1e", point->error_bound);
+    else if (point->error_bound > 0.0) number(verdict, 4, "error bound of the model", "%.1e", point->error_bound);
 }
 
 /* What stands in the way of using the numbers as they are. */
@@ -121,9 +125,12 @@ static void certainty_cautions(lw_verdict *verdict, const lw_run *run)
         caution(verdict, certainty->test.too_high
                              ? "The global test rejects (too high): a blunder, sigmas too small, or a wrong model."
                              : "The global test rejects (too low): sigmas too large, or correlations left out.");
-    if (run->damping > 0.0 && run->asked && run->asked->sigma)
-        caution(verdict, "Sigma is %s; the variance factor depends on the damping.",
-                certainty->multiplied ? "scaled by an estimated variance factor that depends on the damping" : "not the whole error: damping biases the model");
+    if (run->damping == 0.0 || !run->asked || !run->asked->sigma) return;
+    if (run->asked->meaning == LW_MEANS_POSTERIOR)
+        caution(verdict, "Sigma is posterior: it holds only if the penalty at this damping is a true prior.");
+    else
+        caution(verdict, "Sigma is the noise of the data only: the bias of the damping is not in it%s.",
+                certainty->multiplied ? ", and it carries a variance factor that depends on the damping" : "");
 }
 
 static void estimate_cautions(lw_verdict *verdict, const lw_run *run)
@@ -131,7 +138,7 @@ static void estimate_cautions(lw_verdict *verdict, const lw_run *run)
     const lw_estimate *estimate = run->estimate;
     if (run->interrupted) caution(verdict, "Interrupted: this is the iterate that was reached, not the answer.");
     else if (estimate->stop == LW_STOP_STEPS || estimate->stop == LW_STOP_STAGNATED || estimate->stop == LW_STOP_MEMORY)
-        caution(verdict, "Not converged: %s; error bound of the model %.1e.", lw_stop_words(estimate->stop), estimate->point.error_bound);
+        caution(verdict, "Not converged. %s The error bound of the model is %.1e.", lw_stop_words(estimate->stop), estimate->point.error_bound);
 }
 
 static void choice_cautions(lw_verdict *verdict, const lw_run *run)
@@ -148,13 +155,17 @@ static void probe_numbers(lw_verdict *verdict, const lw_run *run)
     snprintf(verdict->headline, sizeof verdict->headline, "%d pattern%s put through %lld observations of %lld parameters%s.",
              probe->patterns, probe->patterns == 1 ? "" : "s", (long long)run->system->observations_used,
              (long long)probe->parameters, probe->noisy ? ", with noise at the stated sigma" : "");
-    int k = 0;
-    for (; k < probe->patterns && k < LW_VERDICT_NUMBERS; k++)
-        number(verdict, k, probe->pattern[k].name, "%.0f %% of the amplitude came back, correlation %.2f",
-               100.0 * probe->pattern[k].overall_amplitude, probe->pattern[k].overall_correlation);
+    char text[96];
+    lw_verdict_number(probe->amplitude, 3, run->problem->parameter_unit, text, sizeof text);
+    if (run->damping > 0.0)
+        number(verdict, 0, "damping and amplitude", "%.4g (%s); %s", run->damping, run->damping_chosen_by, text);
+    else number(verdict, 0, "damping and amplitude", "none; %s", text);
+    int k = 1, first = k;
+    for (; k - first < probe->patterns && k < LW_VERDICT_NUMBERS; k++)
+        number(verdict, k, probe->pattern[k - first].name, "%.0f %% of the amplitude came back, correlation %.2f",
+               100.0 * probe->pattern[k - first].overall_amplitude, probe->pattern[k - first].overall_correlation);
     if (probe->trials && k < LW_VERDICT_NUMBERS) {
         int64_t worst = largest_row(probe->spread, probe->parameters, NULL);
-        char text[96];
         lw_verdict_number(worst >= 0 ? probe->spread[worst] : LW_UNKNOWN, 3, run->problem->parameter_unit, text, sizeof text);
         number(verdict, k, probe->bootstrap ? "largest spread (bootstrap)" : "largest spread (noise)", "%s at %.60s, from %d trials", text,
                worst >= 0 ? lw_ids_name(run->problem->parameters, worst) : "-", probe->trials);
@@ -184,8 +195,11 @@ void lw_verdict_make(const lw_run *run, lw_verdict *out)
     char count[64] = "";
     if (held) snprintf(count, sizeof count, " (%lld held)", held);
     bool network = certainty && certainty->standardized && run->damping == 0.0;
-    snprintf(out->headline, sizeof out->headline, "%lld parameters%s estimated from %lld observations%s%s.", (long long)problem->n,
-             count, (long long)run->system->observations_used, network ? ": " : "", network ? fit_words(run) : "");
+    char aside[80] = "";
+    if (run->outliers && run->outliers->set_aside)
+        snprintf(aside, sizeof aside, ", %lld set aside", (long long)run->outliers->set_aside);
+    snprintf(out->headline, sizeof out->headline, "%lld parameters%s estimated from %lld observations%s%s%s.", (long long)problem->n,
+             count, (long long)run->system->observations_used, aside, network ? ": " : "", network ? fit_words(run) : "");
     if (network) network_numbers(out, run);
     else damped_numbers(out, run);
     estimate_cautions(out, run);

@@ -22,6 +22,27 @@ static void write_carried(lw_csv_writer *writer, const lw_carried *carried, int6
         else lw_csv_empty(writer);
 }
 
+/* Columns of parameters.csv that the program reads but that a reader of the run wants beside the estimate. */
+static void write_place_head(lw_csv_writer *writer, const lw_problem *problem)
+{
+    static const char *const axis[] = {"x", "y", "z"};
+    if (problem->point) lw_csv_text(writer, "point");
+    if (problem->axis) lw_csv_text(writer, "axis");
+    if (problem->region) lw_csv_text(writer, "region");
+    for (int d = 0; d < 3; d++)
+        if (problem->coordinate[d]) lw_csv_text(writer, axis[d]);
+}
+
+static void write_place(lw_csv_writer *writer, const lw_problem *problem, int64_t j)
+{
+    static const char *const axis[] = {"", "east", "north", "up", "x", "y", "z"};
+    if (problem->point) lw_csv_text(writer, problem->point[j] >= 0 ? lw_ids_name(problem->point_names, problem->point[j]) : "");
+    if (problem->axis) lw_csv_text(writer, axis[problem->axis[j]]);
+    if (problem->region) lw_csv_text(writer, problem->region[j] >= 0 ? lw_ids_name(problem->region_names, problem->region[j]) : "");
+    for (int d = 0; d < 3; d++)
+        if (problem->coordinate[d]) lw_csv_number(writer, problem->coordinate[d][j]);
+}
+
 static void write_bound(lw_csv_writer *writer, const lw_run *run, int64_t j)
 {
     if (!run->at_bound) {
@@ -52,6 +73,7 @@ lw_status lw_write_parameters(const lw_run *run, const char *path, lw_error *err
     }
     lw_csv_text(writer, "at_bound");
     if (run->at_bound && run->bound_multiplier) lw_csv_text(writer, "bound_multiplier");
+    write_place_head(writer, problem);
     for (int c = 0; c < problem->parameter_carried.columns; c++) lw_csv_text(writer, problem->parameter_carried.name[c]);
     lw_csv_end_row(writer);
     for (int64_t j = 0; j < problem->n; j++) {
@@ -66,6 +88,7 @@ lw_status lw_write_parameters(const lw_run *run, const char *path, lw_error *err
         lw_csv_integer(writer, run->check->hits[j]);
         lw_csv_number(writer, run->check->coverage[j]);
         write_bound(writer, run, j);
+        write_place(writer, problem, j);
         write_carried(writer, &problem->parameter_carried, j);
         lw_csv_end_row(writer);
     }

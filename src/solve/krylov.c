@@ -14,6 +14,8 @@ static void free_krylov(lw_decomposition *base)
     for (int c = 0; c < LW_LOCKSTEP; c++) lw_bidiagonal_clear(&self->B[c]);
     lw_basis_clear(&self->basis);
     lw_free(self->singular);
+    lw_free(self->stacked.x);
+    lw_free(self->split);
     lw_operator_free(self->plain);
     lw_standard_form_free(self->form);
     lw_free(self);
@@ -31,21 +33,23 @@ static int64_t rank(lw_decomposition *base)
     return -1;
 }
 
-#define METHODS(name_)                                                                                       \
+#define METHODS(name_, extend_)                                                                              \
     {                                                                                                        \
         .engine = name_, .evaluate = lw_krylov_evaluate, .estimate = lw_krylov_estimate,                     \
-        .extend = lw_krylov_extend, .solve_many = lw_krylov_solve_many, .rank = rank, .rcond = rcond,        \
+        .extend = extend_, .solve_many = lw_krylov_solve_many, .rank = rank, .rcond = rcond,        \
         .free_self = free_krylov                                                                             \
     }
-static const lw_decomposition_methods methods[] = {METHODS("lsqr"), METHODS("cgls"), METHODS("lsmr")};
+static const lw_decomposition_methods methods[] = {METHODS("lsqr", lw_krylov_extend), METHODS("cgls", lw_krylov_extend),
+                                                   METHODS("lsmr", lw_krylov_extend), METHODS("lsqr", NULL),
+                                                   METHODS("cgls", NULL), METHODS("lsmr", NULL)};
+#define ENGINES 3
 
 bool lw_is_krylov(const lw_decomposition *decomposition)
 {
     return decomposition->methods->free_self == free_krylov;
 }
 
-/* Without a standard form one damping can still be solved, stacked; a sweep would take that many times over.
- */
+/* Without a standard form the damped equations are solved stacked. */
 static lw_status make_form(lw_krylov *self, const lw_solve_options *options, const lw_watch *watch,
                            lw_error *error)
 {
@@ -58,18 +62,15 @@ static lw_status make_form(lw_krylov *self, const lw_solve_options *options, con
         self->b = lw_standard_form_side(self->form);
         return LW_OK;
     }
-    if (options->sweep)
-        return lw_fail(error, LW_NO_MEMORY,
-                       "a sweep needs a factor of L'L that --memory does not allow: allow more, or use "
-                       "--prefer smallest");
     status = lw_system_operator(self->base.system, &self->product, watch, &self->plain, error);
     self->op = self->plain;
     self->b = self->base.system->b;
+    self->base.methods += ENGINES;
     if (status == LW_OK)
-        status =
-            lw_log_add(self->watch.log,
-                       "The factor of L'L does not fit --memory: the damped equations are solved stacked, "
-                       "which takes more steps.");
+        status = lw_log_add(self->watch.log,
+                            "The penalty is not brought to standard form (%s): the damped equations are solved "
+                            "stacked, one damping at a time, which takes more steps.",
+                            error != NULL && error->text[0] != '\0' ? error->text : "L'L has no factor");
     return status;
 }
 
@@ -84,7 +85,7 @@ lw_status lw_krylov_decompose(lw_system *system, double lambda, const lw_solve_o
     lw_krylov *self = LW_NEW(lw_krylov);
     if (self == NULL) return lw_fail_memory(error, "the decomposition", sizeof *self);
     size_t which = 0;
-    while (which + 1 < sizeof methods / sizeof *methods && strcmp(methods[which].engine, engine) != 0)
+    while (which + 1 < ENGINES && strcmp(methods[which].engine, engine) != 0)
         which++;
     self->base.methods = &methods[which];
     self->base.system = system;
@@ -102,6 +103,8 @@ lw_status lw_krylov_decompose(lw_system *system, double lambda, const lw_solve_o
     lw_status status = make_form(self, options, watch, error);
     if (status == LW_OK) {
         self->most = options->steps > 0 ? options->steps : lw_default_steps(self->op);
+        if (options->steps <= 0 && self->form == NULL && self->most < 4 * self->op->columns + 200)
+            self->most = 4 * self->op->columns + 200; /* [A; lambda L] is not wide */
         self->basis.length = self->op->columns;
         self->basis.most = self->watch.memory / 2 / (8 * (self->op->columns > 0 ? self->op->columns : 1));
         if (self->form != NULL) status = lw_krylov_small_trace(self, error);
@@ -187,8 +190,7 @@ lw_status lw_krylov_extend(lw_decomposition *base, int64_t steps, int *exhausted
     lw_krylov *self = (lw_krylov *)base;
     int ignored;
     if (exhausted == NULL) exhausted = &ignored;
-    *exhausted = self->form == NULL; /* stacked: there is no basis to extend */
-    if (*exhausted) return LW_OK;
+    *exhausted = 0;
     lw_status status = self->started ? rouse_probes(self, error) : start(self, error);
     for (int64_t i = 0; i < steps && status == LW_OK; i++) {
         if (all_ended(&self->gk) || self->made >= self->most) break;
@@ -208,6 +210,7 @@ lw_status lw_largest_singular(lw_decomposition *decomposition, const lw_watch *w
     *out = 0.0;
     if (lw_is_krylov(decomposition)) {
         lw_krylov *self = (lw_krylov *)decomposition;
+        if (self->form == NULL) return lw_krylov_stacked_top(self, watch, out, error);
         int exhausted = 0;
         int64_t missing = STEPS - self->made;
         lw_status status =
@@ -215,7 +218,7 @@ lw_status lw_largest_singular(lw_decomposition *decomposition, const lw_watch *w
         if (status == LW_OK) *out = lw_bidiagonal_largest(&self->B[0]);
         return status;
     }
-    lw_solve_options options = {.sweep = 1, .steps = STEPS};
+    lw_solve_options options = {.sweep = 1};
     lw_watch quiet = {
         .memory = lw_watch_memory(watch), .seed = lw_watch_seed(watch), .team = lw_watch_team(watch)};
     lw_decomposition *own = NULL;

@@ -4,7 +4,8 @@
  *  Many dampings: one bidiagonalization for all of them, whatever engine was named,
  *      A V_k = U_{k+1} B_k,  x(lambda) = V_k y(lambda),  y from the small bidiagonal problem (projected.h)
  *  with V_k kept in blocks while it fits half the memory budget; beyond it the curve is still read from B_k,
- * and models are made by the short recurrence, one damping at a time. The trace of the influence matrix:
+ * and models are made by the short recurrence, one damping at a time. Where L'L has no factor (memory, too many
+ * undamped directions) there is no bidiagonalization and no `extend`: each damping is solved stacked. The trace of the influence matrix:
  * exact, from singular values, for small problems; else by random +-1 probes z, each with its own
  * bidiagonalization in lockstep (one pass over the matrix for all), trace H = E[z'H z], z'H z by Gauss
  * quadrature. Source of the probes: Hutchinson, Commun. Statist. Simula. 19(2):433-450, 1990. */
@@ -26,6 +27,19 @@ typedef struct lw_basis {
     int64_t most;                        /**< vectors that the budget allows */
 } lw_basis;
 
+/** Without a standard form: the models of the latest damping, from which the next starts. */
+typedef struct lw_stacked {
+    int sides;      /**< columns of x; 0 none yet */
+    double lambda;
+    double inverse; /**< lower bound of ||(A'A + lambda^2 L'L)^-1|| */
+    double *x;      /**< columns x sides */
+} lw_stacked;
+
+/** Misfit of the observations alone at a damping whose model the basis cannot give. */
+typedef struct lw_split {
+    double lambda, misfit;
+} lw_split;
+
 typedef struct lw_krylov {
     lw_decomposition base;
     lw_iterate *iterate; /**< the engine's recurrence */
@@ -34,7 +48,8 @@ typedef struct lw_krylov {
     int damped, probes;
     lw_watch watch; /**< for calls that bring none: memory, seed and log only */
     lw_standard_form
-        *form;          /**< NULL: L'L cannot be factored within the budget, one damping is solved stacked */
+        *form;          /**< NULL: L'L has no factor, each damping is solved stacked (krylov_stacked.c) */
+    lw_stacked stacked;
     lw_operator *op;    /**< borrowed from the form */
     lw_operator *plain; /**< A itself, made when it is needed beside the form */
     lw_product_options product;
@@ -48,6 +63,8 @@ typedef struct lw_krylov {
     lw_bidiagonal B[LW_LOCKSTEP];
     lw_basis basis;
     bool keeps;       /**< V is complete */
+    lw_split *split;  /**< with weighted priors and without V */
+    int splits;
     double *singular; /**< exact trace: singular values of Abar; NULL none */
     int64_t singular_count;
     double largest; /**< most alpha_i + beta_{i+1} of side 0: a bound of sigma_1 as B shows it */
@@ -77,9 +94,13 @@ lw_status lw_krylov_extend(lw_decomposition *self, int64_t steps, int *exhausted
 lw_status lw_krylov_solve_many(lw_decomposition *self, double lambda, int64_t k, const double *f,
                                const double *g, const double *h, double *r, double *z, double *u,
                                lw_error *error);
-/** z (columns) at one damping from the stacked system, without the standard form. */
-lw_status lw_krylov_stacked(lw_krylov *self, double lambda, const lw_watch *watch, double *z,
-                            lw_iterate_result *out, lw_error *error);
+/** Without the standard form: z (columns) at one damping; with probes also effective_parameters of *point. */
+lw_status lw_krylov_stacked(lw_krylov *self, double lambda, int probes, const lw_watch *watch, double *z,
+                            lw_iterate_result *out, lw_point *point, lw_error *error);
+lw_status lw_krylov_evaluate_stacked(lw_krylov *self, int count, const double *lambda, int want_trace,
+                                     lw_point *point, double *models, const lw_watch *watch, lw_error *error);
+/** A damping near or somewhat above the largest singular value of the standard form, as the data show it. */
+lw_status lw_krylov_stacked_top(lw_krylov *self, const lw_watch *watch, double *out, lw_error *error);
 /** w = V y (width x count); y: k x count. */
 void lw_basis_multiply(const lw_basis *basis, int64_t k, int count, const double *y, double *w,
                        lw_team *team);

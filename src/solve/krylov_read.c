@@ -78,7 +78,7 @@ static lw_status read_models(lw_krylov *self, int count, const double *lambda, c
         status = lw_fail_memory(error, "the models", (width + m) * SOME * sizeof(double));
     for (int at = 0; at < count && status == LW_OK; at += SOME) {
         int some = count - at < SOME ? count - at : SOME;
-        status = make_models(self, some, lambda + at, y + at * k, watch, w, error);
+        status = make_models(self, some, lambda + at, y != NULL ? y + at * k : NULL, watch, w, error);
         if (status == LW_OK && split) split_misfit(self, some, w, r, point + at);
         if (status == LW_OK && models != NULL)
             status =
@@ -86,6 +86,30 @@ static lw_status read_models(lw_krylov *self, int count, const double *lambda, c
     }
     lw_free(w);
     lw_free(r);
+    return status;
+}
+
+/* The misfit of the observations alone where V is not kept: by the recurrence, once for each damping that has
+ * converged. */
+static lw_status split_points(lw_krylov *self, int count, const double *lambda, lw_point *point,
+                              const lw_watch *watch, lw_error *error)
+{
+    lw_status status = LW_OK;
+    for (int i = 0; i < count && status == LW_OK; i++) {
+        int at = 0;
+        while (at < self->splits && self->split[at].lambda != lambda[i]) at++;
+        if (at == self->splits && point[i].error_bound > CURVE_TOLERANCE) continue;
+        if (at == self->splits) {
+            lw_split *more = lw_resize(self->split, (size_t)at + 1, sizeof *more);
+            lw_point own = point[i];
+            if (more == NULL) return lw_fail_memory(error, "the curve", (size_t)at * sizeof *more);
+            self->split = more;
+            status = read_models(self, 1, &lambda[i], NULL, &own, NULL, watch, error);
+            if (status != LW_OK) break;
+            self->split[self->splits++] = (lw_split){.lambda = lambda[i], .misfit = own.misfit};
+        }
+        point[i].misfit = self->split[at].misfit;
+    }
     return status;
 }
 
@@ -113,37 +137,20 @@ static void fill_zero(lw_krylov *self, int count, const double *lambda, lw_point
     if (models != NULL) lw_fill(self->base.system->columns * count, 0.0, models);
 }
 
-/* Without a standard form each damping is solved on its own. */
-static lw_status evaluate_stacked(lw_krylov *self, int count, const double *lambda, lw_point *point,
-                                  double *models, const lw_watch *watch, lw_error *error)
-{
-    lw_status status = LW_OK;
-    for (int i = 0; i < count && status >= 0 && status != LW_INTERRUPTED; i++) {
-        lw_estimate *estimate = NULL;
-        status = lw_krylov_estimate(&self->base, lambda[i], watch, &estimate, error);
-        if (status < 0) break;
-        point[i] = estimate->point;
-        if (models != NULL)
-            lw_copy(self->base.system->columns, estimate->z, models + i * self->base.system->columns);
-        lw_estimate_free(estimate);
-    }
-    return status == LW_NOT_CONVERGED ? LW_OK : status;
-}
-
 lw_status lw_krylov_evaluate(lw_decomposition *base, int count, const double *lambda, int want_trace,
                              lw_point *point, double *models, const lw_watch *watch, lw_error *error)
 {
     lw_krylov *self = (lw_krylov *)base;
     lw_status status = LW_OK;
     if (self->form == NULL)
-        return evaluate_stacked(self, count, lambda, point, models, watch_of(self, watch), error);
+        return lw_krylov_evaluate_stacked(self, count, lambda, want_trace, point, models, watch_of(self, watch), error);
     if (!self->started || self->B[0].k < 1) status = lw_krylov_extend(base, 1, NULL, watch, error);
     if (status != LW_OK) return status;
     if (self->B[0].k < 1) {
         fill_zero(self, count, lambda, point, models);
         return want_trace ? lw_krylov_trace(self, count, lambda, point, error) : LW_OK;
     }
-    bool wants_y = models != NULL || base->system->priors > 0;
+    bool splits = base->system->priors > 0, wants_y = models != NULL || (splits && self->keeps);
     lw_projected *at = LW_NEW_ARRAY(lw_projected, count);
     double *y = wants_y ? lw_alloc((size_t)self->B[0].k * (size_t)count, sizeof(double)) : NULL;
     if (at == NULL || (wants_y && y == NULL))
@@ -155,8 +162,10 @@ lw_status lw_krylov_evaluate(lw_decomposition *base, int count, const double *la
         if (good && (self->front == 0.0 || lambda[i] < self->front)) self->front = lambda[i];
     }
     if (status == LW_OK && want_trace) status = lw_krylov_trace(self, count, lambda, point, error);
-    if (status == LW_OK && (models != NULL || (wants_y && self->keeps)))
+    if (status == LW_OK && wants_y)
         status = read_models(self, count, lambda, y, point, models, watch_of(self, watch), error);
+    else if (status == LW_OK && splits)
+        status = split_points(self, count, lambda, point, watch_of(self, watch), error);
     lw_free(at);
     lw_free(y);
     return status;
@@ -227,7 +236,7 @@ static lw_status solve(lw_krylov *self, double lambda, const lw_watch *watch, do
 }
 
 static lw_status complete(lw_krylov *self, double lambda, const double *z, const lw_iterate_result *result,
-                          lw_estimate **out, lw_error *error)
+                          const lw_point *trace, lw_estimate **out, lw_error *error)
 {
     lw_status status = lw_estimate_from_model(self->base.system, lambda, z, NULL, 0, out, error);
     if (status < 0) return status;
@@ -238,6 +247,10 @@ static lw_status complete(lw_krylov *self, double lambda, const double *z, const
     e->rank = -1;
     e->rcond = self->cond_A > 0.0 ? 1.0 / self->cond_A : (double)NAN;
     e->point.error_bound = result->error_bound;
+    if (self->form == NULL) {
+        e->point.effective_parameters = trace->effective_parameters;
+        e->point.effective_spread = trace->effective_spread;
+    }
     if (self->damped && self->form != NULL && (self->singular != NULL || self->probes > 0)) {
         int exhausted = 0;
         bool ready = false;
@@ -265,16 +278,17 @@ lw_status lw_krylov_estimate(lw_decomposition *base, double lambda, const lw_wat
     size_t width = (size_t)self->op->columns, columns = (size_t)base->system->columns;
     double *w = lw_alloc_zero(width, sizeof(double)), *z = lw_alloc(columns, sizeof(double));
     lw_iterate_result result;
+    lw_point trace = {.effective_parameters = (double)NAN, .effective_spread = (double)NAN};
     lw_status status = LW_OK, after = LW_OK;
     if (w == NULL || z == NULL)
         status = lw_fail_memory(error, "the model", (width + columns) * sizeof(double));
     if (status == LW_OK && self->form == NULL) {
-        status = lw_krylov_stacked(self, lambda, watch, z, &result, error);
+        status = lw_krylov_stacked(self, lambda, self->probes > 0 ? self->probes : 0, watch, z, &result, &trace, error);
     } else if (status == LW_OK) {
         status = solve(self, lambda, watch, w, &result, error);
         if (status >= 0) after = lw_standard_form_back(self->form, 1, w, z, error);
     }
-    if (status >= 0 && after >= 0) after = complete(self, lambda, z, &result, out, error);
+    if (status >= 0 && after >= 0) after = complete(self, lambda, z, &result, &trace, out, error);
     lw_free(w);
     lw_free(z);
     if (after < 0) {

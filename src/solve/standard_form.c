@@ -52,7 +52,7 @@ double lw_standard_form_factor_seconds(const lw_standard_form *form)
 }
 
 /* c <- Q'y, y <- y - Q c, for k vectors. */
-static void project(lw_standard_form *form, int64_t k, double *y)
+void lw_standard_form_project(lw_standard_form *form, int64_t k, double *y)
 {
     int64_t m = form->system->rows, d = form->null.defect;
     for (int64_t v = 0; d > 0 && v < k; v++, y += m) {
@@ -70,7 +70,7 @@ static void apply(void *state, int k, const double *w, double *y)
         int some = k - at < LW_STANDARD_BLOCK ? k - at : LW_STANDARD_BLOCK;
         lw_standard_root_apply(&form->root, some, w + at * width, form->model);
         lw_apply(form->A, some, form->model, y + at * m);
-        project(form, some, y + at * m);
+        lw_standard_form_project(form, some, y + at * m);
     }
 }
 
@@ -84,7 +84,7 @@ static void apply_transposed(void *state, int k, const double *y, double *w)
         const double *from = y + at * m;
         if (d > 0) {
             memcpy(form->tall, from, (size_t)(m * some) * sizeof *from);
-            project(form, some, form->tall);
+            lw_standard_form_project(form, some, form->tall);
             from = form->tall;
         }
         lw_apply_transposed(form->A, some, from, form->model);
@@ -112,8 +112,7 @@ static lw_status undetermined(const lw_standard_form *form, lw_error *error)
                    named > 2 ? "'" : "", missing > 3 ? " and others" : "");
 }
 
-/* to <- from / spread: what the operator takes for z. */
-static void narrow(const lw_standard_form *form, int64_t k, const double *from, double *to)
+void lw_standard_form_narrow(const lw_standard_form *form, int64_t k, const double *from, double *to)
 {
     int64_t n = form->system->columns;
     const double *spread = form->root.spread;
@@ -135,7 +134,7 @@ static lw_status multiply_null(lw_standard_form *form, double **out, lw_error *e
         for (int64_t v = 0; v < some; v++)
             for (int64_t p = N->start[at + v]; p < N->start[at + v + 1]; p++)
                 form->model[N->index[p] + v * n] = N->value[p] /= form->system->scale[N->index[p]];
-        narrow(form, some, form->model, form->model);
+        lw_standard_form_narrow(form, some, form->model, form->model);
         lw_apply(form->A, (int)some, form->model, AN + at * m);
     }
     for (int64_t v = 0; v < d; v++) {
@@ -154,7 +153,8 @@ static lw_status project_null(lw_standard_form *form, const lw_watch *watch, lw_
     double *AN = NULL;
     if (d == 0) return LW_OK;
     if (lw_watch_budget(watch, lw_bytes(lw_bytes(m, d), 16), "undamped directions", "", NULL) != LW_OK)
-        return LW_QUALIFIED;
+        return lw_fail(error, LW_QUALIFIED, "the %lld undamped directions of %lld equations do not fit --memory",
+                       (long long)d, (long long)m);
     int64_t tall = m > d ? m : d;
     lw_status status = multiply_null(form, &AN, error);
     if (status == LW_OK) {
@@ -205,7 +205,7 @@ lw_status lw_standard_form_new(lw_system *system, int damped, const lw_product_o
     if (status == LW_OK) status = project_null(form, watch, error);
     if (status == LW_OK) {
         lw_copy(system->rows, system->b, form->side);
-        project(form, 1, form->side);
+        lw_standard_form_project(form, 1, form->side);
         status = make_operator(form, error);
     }
     if (status != LW_OK) {
@@ -216,6 +216,13 @@ lw_status lw_standard_form_new(lw_system *system, int damped, const lw_product_o
     return LW_OK;
 }
 
+static lw_status root_status(const lw_standard_form *form, lw_error *error)
+{
+    if (form->root.failed == LW_NO_MEMORY) return lw_fail_memory(error, "a solve with the factor of L'L", 0);
+    if (form->root.failed != LW_OK) return lw_fail(error, LW_SYSTEM, "a solve with the factor of L'L failed");
+    return LW_OK;
+}
+
 lw_status lw_standard_form_root(lw_standard_form *form, int64_t k, const double *w, double *z,
                                 lw_error *error)
 {
@@ -223,22 +230,30 @@ lw_status lw_standard_form_root(lw_standard_form *form, int64_t k, const double 
         int some = (int)(k - at < LW_STANDARD_BLOCK ? k - at : LW_STANDARD_BLOCK);
         lw_standard_root_apply(&form->root, some, w + at * form->root.width, z + at * form->system->columns);
     }
-    if (form->root.failed == LW_NO_MEMORY) return lw_fail_memory(error, "a solve with the factor of L'L", 0);
-    if (form->root.failed != LW_OK) return lw_fail(error, LW_SYSTEM, "a solve with the factor of L'L failed");
-    return LW_OK;
+    return root_status(form, error);
 }
 
-/* z = L^# w + N T^-1 Q'(b - A L^# w). */
-lw_status lw_standard_form_back(lw_standard_form *form, int64_t k, const double *w, double *z,
-                                lw_error *error)
+lw_status lw_standard_form_root_transposed(lw_standard_form *form, int64_t k, const double *z, double *w,
+                                           lw_error *error)
+{
+    for (int64_t at = 0; at < k; at += LW_STANDARD_BLOCK) {
+        int some = (int)(k - at < LW_STANDARD_BLOCK ? k - at : LW_STANDARD_BLOCK);
+        lw_standard_root_transposed(&form->root, some, z + at * form->system->columns, w + at * form->root.width);
+    }
+    return root_status(form, error);
+}
+
+/* z = L^# w + N T^-1 Q'(side - A L^# w). */
+lw_status lw_standard_form_back_from(lw_standard_form *form, int64_t k, const double *side, int64_t stride,
+                                     const double *w, double *z, lw_error *error)
 {
     int64_t m = form->system->rows, n = form->system->columns, d = form->null.defect;
     lw_status status = lw_standard_form_root(form, k, w, z, error);
-    for (int64_t v = 0; status == LW_OK && d > 0 && v < k; v++, z += n) {
+    for (int64_t v = 0; status == LW_OK && d > 0 && v < k; v++, z += n, side += stride) {
         const lw_sparse *N = form->null.basis;
-        narrow(form, 1, z, form->model);
+        lw_standard_form_narrow(form, 1, z, form->model);
         lw_apply(form->A, 1, form->model, form->tall);
-        lw_scale_add(m, 1.0, form->system->b, -1.0, form->tall, NULL);
+        lw_scale_add(m, 1.0, side, -1.0, form->tall, NULL);
         lw_dense_vector(1, m, d, 1.0, form->Q, m, form->tall, 0.0, form->small);
         lw_dense_qr_solve_r(&form->qr, 0, 1, form->small, d);
         for (int64_t c = 0; c < d; c++) {
@@ -248,4 +263,10 @@ lw_status lw_standard_form_back(lw_standard_form *form, int64_t k, const double 
         }
     }
     return status;
+}
+
+lw_status lw_standard_form_back(lw_standard_form *form, int64_t k, const double *w, double *z,
+                                lw_error *error)
+{
+    return lw_standard_form_back_from(form, k, form->system->b, 0, w, z, error);
 }

@@ -31,7 +31,9 @@ void lw_penalty_null_clear(lw_penalty_null *null)
 
 static lw_status make_room(haul *got, int64_t vectors, int64_t entries, lw_error *error)
 {
-    if (got->null->defect + vectors > got->most) return LW_QUALIFIED;
+    if (got->null->defect + vectors > got->most)
+        return lw_fail(error, LW_QUALIFIED, "the penalty leaves more than %lld directions undamped",
+                       (long long)got->most);
     if (got->null->defect + vectors + 1 > got->room) {
         int64_t room = 2 * got->room + vectors + 16;
         int64_t *start = lw_resize(got->start, (size_t)room, sizeof *start);
@@ -208,10 +210,13 @@ static lw_status search(haul *got, const lw_system *system, const lw_sparse *L, 
     for (int q = thorough ? FIRST_BLOCK : POLYNOMIALS;; q *= 2) {
         int used = q;
         start_again(got);
-        if (q > LARGEST_BLOCK) return LW_QUALIFIED;
+        if (q > LARGEST_BLOCK)
+            return lw_fail(error, LW_QUALIFIED, "the penalty leaves more than %d directions of connected parameters undamped",
+                           LARGEST_BLOCK / 2);
         int64_t bytes = lw_bytes(L->rows + 2 * L->columns, 8 * (int64_t)q);
         if (lw_watch_budget(watch, bytes, "null vectors of the penalty", "", NULL) != LW_OK)
-            return LW_QUALIFIED;
+            return lw_fail(error, LW_QUALIFIED,
+                           "the search for what the penalty leaves undamped does not fit --memory");
         double *X = LW_NEW_ZEROS(double, L->columns *q);
         if (X == NULL) return lw_fail_memory(error, "null vectors", (size_t)(L->columns * q) * 8);
         status = make_room(got, 0, 0, error);
@@ -254,6 +259,6 @@ void lw_standard_warn(lw_log *log, int64_t directions, double rcond)
     if (!(rcond < 1e-5)) return;
     lw_log_add(log,
                "The data hardly determine a direction that the penalty leaves alone (%lld such directions, condition %.1e): "
-               "parameters run away along it at any damping. --also-smallest 0.01, --prefer flattest or a prior_sigma hold it.",
+               "parameters run away along it at any damping. --also-smallest 0.01, --prefer flattest, or a prior_sigma with damp_weight 1 hold it.",
                (long long)directions, 1.0 / rcond);
 }

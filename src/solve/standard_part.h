@@ -49,6 +49,9 @@ struct lw_standard_form {
     double *B, *AB; /**< one-pass step: A'Q, columns x defect, and A B, rows x defect */
 };
 
+/** to <- from / spread, k vectors: what form->A takes for z. */
+void lw_standard_form_narrow(const lw_standard_form *form, int64_t k, const double *from, double *to);
+
 /** (I - Q Q') A diag(spread) as an operator that keeps the one-pass step of the product; `form` borrowed.
  *  What a column of an undamped parameter has is in the span of Q, so nothing of it is left. */
 lw_status lw_standard_fused_new(lw_standard_form *form, lw_operator **out, lw_error *error);

@@ -34,7 +34,9 @@ static lw_status diagonal_root(const lw_system *system, lw_standard_root *root, 
     int64_t n = system->columns, d = 0;
     const double *l = system->penalty_diagonal;
     for (int64_t j = 0; j < n; j++) d += l[j] == 0.0;
-    if (d > MOST_UNDAMPED) return LW_QUALIFIED;
+    if (d > MOST_UNDAMPED)
+        return lw_fail(error, LW_QUALIFIED, "the penalty leaves more than %d directions undamped",
+                       MOST_UNDAMPED);
     root->kind = LW_ROOT_DIAGONAL;
     root->width = n;
     root->inverse = LW_NEW_ARRAY(double, n);
@@ -122,7 +124,7 @@ static lw_status factor_rest(const lw_sparse *L, const lw_penalty_null *null, co
         double start = now();
         status = lw_cholesky_analyse(W, watch, &root->factor, &size, error);
         if (status == LW_OK && lw_watch_budget(watch, size.bytes, "the factor of L'L", "", NULL) != LW_OK)
-            status = LW_QUALIFIED;
+            status = lw_fail(error, LW_QUALIFIED, "the factor of L'L does not fit --memory");
         if (status == LW_OK) status = lw_cholesky_factorize(root->factor, W, watch, &defect, error);
         root->seconds += now() - start;
         if (status == LW_UNSOLVABLE) {
@@ -150,7 +152,8 @@ static lw_status factor_root(const lw_system *system, const lw_watch *watch, lw_
         if (status == LW_OK) status = factor_rest(L, null, watch, root, &doubtful, error);
         if (!doubtful) break;
     }
-    if (status == LW_OK && doubtful > 1) status = LW_QUALIFIED;
+    if (status == LW_OK && doubtful > 1)
+        status = lw_fail(error, LW_QUALIFIED, "L'L is too ill-conditioned for a factor");
     if (status == LW_OK) {
         root->work = LW_NEW_ARRAY(double, lw_bytes(root->width, LW_STANDARD_BLOCK));
         if (root->work == NULL)

@@ -95,9 +95,10 @@ lw_status lw_penalty_trial_inverse(const lw_sparse *L, const lw_penalty_graph *g
     lw_status status = shifted_gram(L, graph, &W, error);
     if (status == LW_OK) status = lw_cholesky_analyse(W, watch, &factor, &size, error);
     if (status == LW_OK && lw_watch_budget(watch, size.bytes, "the factor of L'L", "", NULL) != LW_OK)
-        status = LW_QUALIFIED;
+        status = lw_fail(error, LW_QUALIFIED, "the factor of L'L does not fit --memory");
     if (status == LW_OK) status = lw_cholesky_factorize(factor, W, watch, &defect, error);
-    if (status == LW_UNSOLVABLE) status = LW_QUALIFIED;
+    if (status == LW_UNSOLVABLE)
+        status = lw_fail(error, LW_QUALIFIED, "L'L is too ill-conditioned for a factor");
     for (int turn = 0; status == LW_OK && turn < ITERATIONS; turn++) {
         status = lw_cholesky_solve(factor, q, X, error);
         for (int64_t c = 0; status == LW_OK && c < graph->count; c++) {

@@ -4,14 +4,18 @@
 #include "solve/engine.h"
 #include "solve/exact.h"
 
-#define DEFAULT_COST 2e8
+#include <string.h>
+
+#define DEFAULT_COST 1e8
 #define MOST_REFINEMENTS 10
 
-static double cost_of(const lw_system *system, double lambda)
+static double cost_of(const lw_system *system, double lambda, const lw_engine *engine)
 {
     int64_t entries = system->matrix ? lw_sparse_nonzeros(system->matrix) : 0;
     if (lambda > 0) entries += system->penalty ? lw_sparse_nonzeros(system->penalty) : system->penalty_rows;
-    return (double)system->columns * (double)(entries + system->rows + system->columns);
+    double solve = (double)(entries + system->rows + system->columns);
+    if (!strcmp(engine->name, "dense")) solve += (double)system->rows * (double)system->columns; /* both triangles of the QR */
+    return (double)system->columns * solve;
 }
 
 static lw_status one_variance(lw_exact *exact, lw_decomposition *decomposition, double lambda, int64_t j,
@@ -38,7 +42,7 @@ lw_status lw_solve_variances(lw_decomposition *decomposition, double lambda, dou
     const lw_system *system = decomposition->system;
     *worst = 0;
     if (!engine || !(engine->abilities & LW_REFINED)) return LW_QUALIFIED;
-    if (cost_of(system, lambda) > (most_cost > 0 ? most_cost : DEFAULT_COST)) return LW_QUALIFIED;
+    if (cost_of(system, lambda, engine) > (most_cost > 0 ? most_cost : DEFAULT_COST)) return LW_QUALIFIED;
     lw_exact *exact = NULL;
     int qualified = 0;
     lw_status status = lw_exact_new(system, lambda, &exact, error);

@@ -38,6 +38,7 @@ lw_status lw_grid_floor(lw_look *look, double sigma_one, double *floor)
             break;
         }
         if (status != LW_OK) break;
+        if (!here.usable) break; /* iterated for itself, and not converged */
         *floor = lambda;
         const lw_point *a = &before.point, *b = &here.point;
         if (still(a->misfit, b->misfit) && still(a->size, b->size) && lambda < 0.05 * sigma_one) break;

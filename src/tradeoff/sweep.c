@@ -34,7 +34,7 @@ typedef struct sweep {
     bool own_grid;
     double *lambda; /* count, increasing */
     int64_t most, made;
-    bool exhausted, decided;
+    bool exhausted, decided, iterative;
 } sweep;
 
 static lw_status check(const lw_sweep_options *options, const lw_system *system, lw_error *error)
@@ -254,7 +254,7 @@ static void finish(sweep *s, lw_status status)
 {
     lw_curve *curve = s->curve;
     if (curve->row[0].point.lambda <= 0.0) curve->count = 0; /* interrupted before anything was known */
-    curve->iterative = !s->look.direct;
+    curve->iterative = s->iterative;
     curve->steps = s->made;
     lw_choose_compare(curve);
     for (int i = 0; i < curve->choices; i++) qualify(s, &curve->choice[i]);
@@ -273,7 +273,9 @@ static void set_up(sweep *s, lw_decomposition *decomposition, const lw_sweep_opt
     look->error = error;
     look->sigma_stated = options->sigma_stated;
     look->direct = decomposition->methods->extend == NULL;
-    look->cheap = !look->direct || (engine != NULL && (engine->abilities & LW_SWEEPS) != 0);
+    unsigned abilities = engine != NULL ? engine->abilities : 0; /* an iterative engine that has no basis is not cheap */
+    look->cheap = !look->direct || (abilities & (LW_SWEEPS | LW_DIRECT)) == (LW_SWEEPS | LW_DIRECT);
+    s->iterative = (abilities & LW_DIRECT) == 0;
     look->traced = lw_sweep_wants_trace(options);
     look->tolerance = options->tolerance > 0.0 ? options->tolerance : LW_DEFAULT_TOLERANCE;
     look->noise_factor = options->noise_factor > 0.0 ? options->noise_factor : 1.0;

@@ -81,13 +81,14 @@ def times(A, cells, rng):
     return b + sigma * rng.normal(size=len(b)), sigma, coordinate
 
 
-def rays(path, cells, count, shuffled=False):
-    """Rays between random points of opposite faces (alternately along each axis)."""
+def rays(path, cells, count, shuffled=False, every_way=False):
+    """Rays between random points of the two faces that end the last axis, along which the cells are numbered first; every_way:
+    alternately along each axis, so that gradients in all directions are determined."""
     rng = np.random.default_rng(20260401)
     d = len(cells)
     size = np.array(cells, float)
     ends = rng.uniform(0.001, 0.999, (count, 2, d)) * size
-    along = np.arange(count) % d
+    along = np.arange(count) % d if every_way else np.full(count, d - 1)
     ends[np.arange(count), 0, along] = 0.0
     ends[np.arange(count), 1, along] = size[along]
     A = trace_rays(ends, cells)
@@ -105,7 +106,7 @@ def cross_hole(path, side):
     ends = np.empty((side * side, 2, 2))
     ends[:, 0, 0], ends[:, 1, 0] = 0.0, side
     ends[:, 0, 1], ends[:, 1, 1] = np.repeat(z, side), np.tile(z + 0.013, side)
-    A = trace_rays(ends, (side, side))
+    A = trace_rays(ends[:, :, ::-1].copy(), (side, side))
     b, sigma, coordinate = times(A, (side, side), rng)
     write_matrix(path, A, b, sigma, coordinate)
 

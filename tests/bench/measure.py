@@ -50,7 +50,7 @@ def environment():
 
 
 def run(command, codes=(0,)):
-    """Runs one contender: its lines "name value" and, of the whole process, wall, cpu (seconds) and rss (bytes)."""
+    """Runs one contender: its lines "name value" and, of the whole process, wall and cpu (seconds)."""
     start = time.monotonic()
     process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, env=environment())
     output = process.stdout.read()
@@ -59,8 +59,7 @@ def run(command, codes=(0,)):
     process.returncode = os.waitstatus_to_exitcode(status)
     if process.returncode not in codes:
         raise RuntimeError(f'{" ".join(map(str, command))}: exit {process.returncode}: {message.strip()[-400:]}')
-    result = {'process_wall': time.monotonic() - start, 'process_cpu': usage.ru_utime + usage.ru_stime,
-              'process_rss': usage.ru_maxrss * 1024.0}
+    result = {'process_wall': time.monotonic() - start, 'process_cpu': usage.ru_utime + usage.ru_stime}
     for line in output.splitlines():
         word = line.split()
         if len(word) == 2:

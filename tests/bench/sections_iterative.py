@@ -37,7 +37,8 @@ def step(place, figures):
         results = interleave({'fused': [tool, path, 'fused', '1', steps], 'single': [tool, path, 'single', '1', steps],
                               'two passes': [tool, path, 'same', '1', steps], 'plain': [tool, path, 'plain', '1', steps],
                               'fused, 2': [tool, path, 'fused', '2', steps], 'single, 2': [tool, path, 'single', '2', steps],
-                              'scipy': [place.script('contender.py'), 'step', path, steps]}, 3 if place.quick else 5)
+                              'scipy': [place.script('contender.py'), 'step', path, steps]},
+                             5 if n == 10 ** 4 and not place.quick else 3)
         case = f'n = {n:.0e}, {"3-D" if deep else "2-D"}{", shuffled" if shuffled else ""}'
         cpu = {name: middle(r, 'step_cpu') for name, r in results.items()}
         wall = {name: middle(r, 'step_wall') for name, r in results.items()}
@@ -49,10 +50,12 @@ def step(place, figures):
                     wall['scipy'] / wall['fused, 2'], wanted, False, spread(results['fused, 2'], 'step_wall'))
         figures.add('SciPy lsqr step / ours single, two threads', case, wall['single, 2'] * ms, wall['scipy'] * ms, 'ms',
                     wall['scipy'] / wall['single, 2'], wanted and 4.5, False, spread(results['single, 2'], 'step_wall'))
-        figures.add('fused step / own two passes', case, cpu['fused'] * ms, cpu['two passes'] * ms, 'ms', cpu['fused'] / cpu['two passes'],
+        figures.add('fused step / own two-pass step', case, cpu['fused'] * ms, cpu['plain'] * ms, 'ms', cpu['fused'] / cpu['plain'],
                     0.85 if wanted else None, True, noise)
-        figures.add('fused single step / own two passes', case, cpu['single'] * ms, cpu['two passes'] * ms, 'ms',
-                    cpu['single'] / cpu['two passes'], 0.60 if wanted else None, True, noise)
+        figures.add('fused single step / own two-pass step', case, cpu['single'] * ms, cpu['plain'] * ms, 'ms',
+                    cpu['single'] / cpu['plain'], 0.60 if wanted else None, True, noise)
+        figures.add('fused step / two passes over its own layout', case, cpu['fused'] * ms, cpu['two passes'] * ms, 'ms',
+                    cpu['fused'] / cpu['two passes'], None, True, noise)
 
 
 def threads(place, figures):
@@ -62,6 +65,9 @@ def threads(place, figures):
     one, two = (middle(results[k], 'step_wall') for k in '12')
     figures.add('one thread / two threads, step', f'n = {n:.0e}', two * 1e3, one * 1e3, 'ms', one / two, 1.8, False,
                 spread(results['2'], 'step_wall'))
+    one, two = (middle(results[k], 'step_cpu') for k in '12')
+    figures.add('processor time of two threads / of one, step (what threads cost)', f'n = {n:.0e}', two * 1e3, one * 1e3, 'ms', two / one,
+                None, True, spread(results['2'], 'step_cpu'))
 
 
 def grid(path, decades=2.5, count=50):
@@ -107,8 +113,9 @@ def loop(place, figures):
 
 
 def smoothing(place, figures):
-    cases = [(place.make('rays-2d-1600.lwm', generate.rays, (40, 40), 1500), 1600, None, None)] if place.quick else \
-        [(ray_file(place, 10 ** 4), 10 ** 4, 20, 10), (ray_file(place, 10 ** 5), 10 ** 5, 40, 10)]
+    cases = [(place.make('rays-every-1600.lwm', generate.rays, (40, 40), 1500, False, True), 1600, None, None)] if place.quick else \
+        [(place.make('rays-every-10000.lwm', generate.rays, (100, 100), 6000, False, True), 10 ** 4, 20, 10),
+         (place.make('rays-every-100000.lwm', generate.rays, (316, 316), 30000, False, True), 10 ** 5, 40, 10)]
     for path, n, wanted, share in cases:
         top = largest_singular(path)
         low, high, count, tool = repr(top * 1e-1), repr(top * 1e2), '50', place.tool('sweep')

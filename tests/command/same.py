@@ -22,7 +22,7 @@ def written(case, out):
             data = re.sub(rb'"command": ".*"|"seconds": \{[^}]*\}', b'', data)
         if name == 'report.html':
             data = re.sub(rb'leastwise (solve|sweep|probe) [^<"]*', b'COMMAND', data)
-            data = re.sub(rb'"seconds":\{[^}]*\}|[0-9.e-]+ s\b', b'', data)
+            data = re.sub(rb'"seconds": ?\{[^}]*\}', b'', data)
         files[name] = data
     return files
 

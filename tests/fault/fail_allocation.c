@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Makes the k-th allocation fail, for every k, from the files to the run's tables: no crash, nothing lost, and either a
- * whole answer or a status with a message. Leaks are counted by the C library's own accounts, and by the leak sanitizer
- * where the program is built with it. Speaks TAP. */
+/* Makes the k-th allocation fail, for every k, from the files to the run's tables: no crash, nothing lost,
+ * and either a whole answer or a status with a message. Leaks are counted by the C library's own accounts,
+ * and by the leak sanitizer where the program is built with it. Speaks TAP. */
 #include "certainty/certainty.h"
 #include "core/memory.h"
 #include "problem/check.h"
@@ -44,7 +44,9 @@ static lw_status write_tables(const lw_run *run, const char *out, lw_error *erro
     static const struct {
         const char *name;
         lw_status (*write)(const lw_run *run, const char *path, lw_error *error);
-    } files[] = {{"parameters.csv", lw_write_parameters}, {"residuals.csv", lw_write_residuals}, {"summary.json", lw_write_summary}};
+    } files[] = {{"parameters.csv", lw_write_parameters},
+                 {"residuals.csv", lw_write_residuals},
+                 {"summary.json", lw_write_summary}};
     lw_status status = LW_OK;
     for (size_t k = 0; k < sizeof files / sizeof *files && status == LW_OK; k++) {
         char path[300];
@@ -59,10 +61,17 @@ static lw_status go(const way *w, const lw_watch *watch, lw_error *error)
 {
     lw_read_options read = {.keep_low = true};
     lw_system_options system_options = {.penalty = {.prefer = w->prefer}};
-    lw_solve_options solve = {.engine = w->engine, .tolerance = 1e-6, .datum_free = w->free_datum, .sweep = w->sweep,
-                              .sweep_from = w->sweep ? 10.0 : 0.0, .sweep_to = w->sweep ? 0.1 : 0.0, .trace_probes = w->sweep};
-    lw_sweep_options grid = {.count = 5, .damping = (const double[]){0.1, 0.3, 1.0, 3.0, 10.0}, .sigma_stated = true};
-    lw_certainty_options options = {.confidence = 0.95, .alpha = 0.001, .power = 0.80, .sigma = true, .reliability = true};
+    lw_solve_options solve = {.engine = w->engine,
+                              .tolerance = 1e-6,
+                              .datum_free = w->free_datum,
+                              .sweep = w->sweep,
+                              .sweep_from = w->sweep ? 10.0 : 0.0,
+                              .sweep_to = w->sweep ? 0.1 : 0.0,
+                              .trace_probes = w->sweep};
+    lw_sweep_options grid = {
+        .count = 5, .damping = (const double[]){0.1, 0.3, 1.0, 3.0, 10.0}, .sigma_stated = true};
+    lw_certainty_options options = {
+        .confidence = 0.95, .alpha = 0.001, .power = 0.80, .sigma = true, .reliability = true};
     lw_problem *problem = NULL;
     lw_check check = {0};
     lw_system *system = NULL;
@@ -76,12 +85,25 @@ static lw_status go(const way *w, const lw_watch *watch, lw_error *error)
     if (status >= 0) status = lw_system_new(problem, &system_options, watch, &system, error);
     if (status >= 0) status = lw_decompose(system, w->damping, &solve, watch, &choice, &decomposition, error);
     if (status >= 0 && w->sweep) status = lw_sweep(decomposition, &grid, watch, &curve, error);
-    if (status >= 0) status = decomposition->methods->estimate(decomposition, w->damping, watch, &estimate, error);
-    if (status >= 0) status = lw_certainty_make(decomposition, estimate, &options, true, watch, &certainty, error);
+    if (status >= 0)
+        status = decomposition->methods->estimate(decomposition, w->damping, watch, &estimate, error);
+    if (status >= 0)
+        status = lw_certainty_make(decomposition, estimate, &options, true, watch, &certainty, error);
     if (status >= 0 && w->files) {
-        lw_run run = {.version = "0", .command = "solve", .command_line = "solve", .folder = w->out, .problem = problem,
-                      .system = system, .check = &check, .engine = choice, .estimate = estimate, .curve = curve,
-                      .certainty = certainty, .damping = w->damping, .damping_chosen_by = "none", .warnings = watch->log};
+        lw_run run = {.version = "0",
+                      .command = "solve",
+                      .command_line = "solve",
+                      .folder = w->out,
+                      .problem = problem,
+                      .system = system,
+                      .check = &check,
+                      .engine = choice,
+                      .estimate = estimate,
+                      .curve = curve,
+                      .certainty = certainty,
+                      .damping = w->damping,
+                      .damping_chosen_by = "none",
+                      .warnings = watch->log};
         status = lw_run_measure(&run, error);
         if (status >= 0) status = write_tables(&run, w->out, error);
     }
@@ -133,7 +155,8 @@ static bool fail_each(const way *w, bool once, long most)
         lw_status status = attempt(w, &error);
         lw_memory_set_gate(NULL, NULL);
         bool fine = status >= 0 || ((status == LW_NO_MEMORY || status == LW_SYSTEM) && error.text[0] != '\0');
-        if (!fine && wrong++ < 5) printf("# allocation %ld of %ld: status %d, '%s'\n", k, most, (int)status, error.text);
+        if (!fine && wrong++ < 5)
+            printf("# allocation %ld of %ld: status %d, '%s'\n", k, most, (int)status, error.text);
     }
     return wrong == 0;
 }
@@ -170,19 +193,31 @@ static void put(const char *folder, const char *name, const char *text)
 /* A small problem with priors, correlations, groups, carried columns and coordinates. */
 static void make_problem(const char *folder, bool datum_defect)
 {
-    put(folder, "design.csv", datum_defect ? "observation,parameter,coefficient\na,x,-1\na,y,1\nb,y,-1\nb,z,1\nc,x,-1\nc,z,1\nd,z,-1\nd,x,1.0\n"
-                                           : "observation,parameter,coefficient\na,x,1\nb,x,0.1\nb,y,1\nc,y,1\nd,x,2\nd,z,1e-3\ne,z,1\n");
-    put(folder, "observations.csv", "observation,value,sigma,group,day\na,1,0.1,g,mon\nb,3,0.1,g,\"tue, late\"\nc,4.1,0.1,h,\nd,-4.2,0.2,h,wed\n");
-    put(folder, "parameters.csv", "parameter,prior,prior_sigma,point,axis,x,note\nx,0.9,,P,east,0,a\ny,2,,P,north,1,b\nz,0,,,,2,\"c \"\"d\"\"\"\n");
+    put(folder, "design.csv",
+        datum_defect
+            ? "observation,parameter,coefficient\na,x,-1\na,y,1\nb,y,-1\nb,z,1\nc,x,-1\nc,z,1\nd,z,-1\nd,x,1."
+              "0\n"
+            : "observation,parameter,coefficient\na,x,1\nb,x,0.1\nb,y,1\nc,y,1\nd,x,2\nd,z,1e-3\ne,z,1\n");
+    put(folder, "observations.csv",
+        "observation,value,sigma,group,day\na,1,0.1,g,mon\nb,3,0.1,g,\"tue, "
+        "late\"\nc,4.1,0.1,h,\nd,-4.2,0.2,h,wed\n");
+    put(folder, "parameters.csv",
+        "parameter,prior,prior_sigma,point,axis,x,note\nx,0.9,,P,east,0,a\ny,2,,P,north,1,b\nz,0,,,,2,\"c "
+        "\"\"d\"\"\"\n");
     put(folder, "covariance.csv", "observation_a,observation_b,covariance\na,b,0.001\n");
     if (datum_defect) return;
-    put(folder, "observations.csv", "observation,value,sigma,group,day\na,1,0.1,g,mon\nb,3,0.1,g,\"tue, late\"\nc,2.1,0.1,h,\nd,2.2,0.2,h,wed\ne,1,0.5,h,\n");
-    put(folder, "parameters.csv", "parameter,prior,prior_sigma,point,axis,x,note\nx,0.9,,P,east,0,a\ny,2,0.5,P,north,1,b\nz,0,,,,2,\"c \"\"d\"\"\"\n");
+    put(folder, "observations.csv",
+        "observation,value,sigma,group,day\na,1,0.1,g,mon\nb,3,0.1,g,\"tue, "
+        "late\"\nc,2.1,0.1,h,\nd,2.2,0.2,h,wed\ne,1,0.5,h,\n");
+    put(folder, "parameters.csv",
+        "parameter,prior,prior_sigma,point,axis,x,note\nx,0.9,,P,east,0,a\ny,2,0.5,P,north,1,b\nz,0,,,,2,\"c "
+        "\"\"d\"\"\"\n");
 }
 
 static void remove_problem(const char *folder)
 {
-    static const char *const names[] = {"design.csv", "observations.csv", "parameters.csv", "covariance.csv", "residuals.csv", "summary.json"};
+    static const char *const names[] = {"design.csv",     "observations.csv", "parameters.csv",
+                                        "covariance.csv", "residuals.csv",    "summary.json"};
     char path[300];
     for (size_t k = 0; k < sizeof names / sizeof *names; k++) {
         (void)snprintf(path, sizeof path, "%s/%s", folder, names[k]);
@@ -198,14 +233,34 @@ int main(void)
     if (!mkdtemp(plain) || !mkdtemp(loose) || !mkdtemp(out)) return 1;
     make_problem(plain, false);
     make_problem(loose, true);
-    const way ways[] = {{.name = "dense, tables written", .engine = "dense", .files = true, .folder = plain, .out = out},
-                        {.name = "cholesky", .engine = "cholesky", .folder = plain, .out = out},
-                        {.name = "dense, damped", .engine = "dense", .damping = 0.5, .folder = plain, .out = out},
-                        {.name = "dense, sweep", .engine = "dense", .damping = 1.0, .sweep = true, .folder = plain, .out = out},
-                        {.name = "cholesky, flattest", .engine = "cholesky", .damping = 0.5, .prefer = LW_PREFER_FLATTEST, .folder = plain, .out = out},
-                        {.name = "cholesky, free datum", .engine = "cholesky", .free_datum = true, .folder = loose, .out = out},
-                        {.name = "lsqr, damped", .engine = "lsqr", .damping = 0.5, .folder = plain, .out = out},
-                        {.name = "lsqr, sweep", .engine = "lsqr", .damping = 1.0, .sweep = true, .folder = plain, .out = out}};
+    const way ways[] = {
+        {.name = "dense, tables written", .engine = "dense", .files = true, .folder = plain, .out = out},
+        {.name = "cholesky", .engine = "cholesky", .folder = plain, .out = out},
+        {.name = "dense, damped", .engine = "dense", .damping = 0.5, .folder = plain, .out = out},
+        {.name = "dense, sweep",
+         .engine = "dense",
+         .damping = 1.0,
+         .sweep = true,
+         .folder = plain,
+         .out = out},
+        {.name = "cholesky, flattest",
+         .engine = "cholesky",
+         .damping = 0.5,
+         .prefer = LW_PREFER_FLATTEST,
+         .folder = plain,
+         .out = out},
+        {.name = "cholesky, free datum",
+         .engine = "cholesky",
+         .free_datum = true,
+         .folder = loose,
+         .out = out},
+        {.name = "lsqr, damped", .engine = "lsqr", .damping = 0.5, .folder = plain, .out = out},
+        {.name = "lsqr, sweep",
+         .engine = "lsqr",
+         .damping = 1.0,
+         .sweep = true,
+         .folder = plain,
+         .out = out}};
     int count = (int)(sizeof ways / sizeof *ways), failed = 0, number = 0;
     printf("1..%d\n", 4 * count);
     for (int i = 0; i < count; i++) {
@@ -217,10 +272,12 @@ int main(void)
         printf("%sok %d - %s: without a failure\n", status < 0 ? "not " : "", ++number, w->name);
         long most = count_allocations(w);
         const bool result[] = {fail_each(w, true, most), fail_each(w, false, most), nothing_lost(w, most)};
-        static const char *const what[] = {"each allocation in turn", "each and all after it", "memory comes back"};
+        static const char *const what[] = {"each allocation in turn", "each and all after it",
+                                           "memory comes back"};
         for (int r = 0; r < 3; r++) {
             failed += !result[r];
-            printf("%sok %d - %s: %s (%ld allocations)\n", result[r] ? "" : "not ", ++number, w->name, what[r], most);
+            printf("%sok %d - %s: %s (%ld allocations)\n", result[r] ? "" : "not ", ++number, w->name,
+                   what[r], most);
         }
         (void)fflush(stdout);
     }

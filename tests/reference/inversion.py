@@ -275,10 +275,10 @@ def bounded(name, low, high):
     for j in range(1, 5):
         p, x = P[f'x{j}'], E[f'x{j}']
         near(p['estimate'], x, 1e-12, 1e-13, f'x{j}')
-        at = 'lower' if low and x == float(low) else 'upper' if high and x == float(high) else 'no'
+        at = 'lower' if low and x == float(low) else 'upper' if high and x == float(high) else ''
         if low or high:
             equal(p['at_bound'], at, f'at_bound of x{j}')
-            if at != 'no':
+            if at:
                 equal(float(p['estimate']), x, 'a parameter at its bound has just that value')
             near(abs(float(p['bound_multiplier'] or 0)), abs(E[f'gradient_{j}']), 1e-10, 1e-10, f'multiplier of x{j}')
 
