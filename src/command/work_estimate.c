@@ -136,6 +136,9 @@ static lw_status plain(lw_work *work, double lambda, lw_error *error)
     if (status >= 0) status = keep(work, status);
     if (status == LW_OK)
         status = keep(work, work->decomposition->methods->estimate(work->decomposition, lambda, &work->watch, &work->estimate, error));
+    if (status == LW_OK && work->qualified == LW_NOT_CONVERGED)
+        lw_log_add(&work->log, "Not converged. %s The error bound of the model is %.1e.", lw_stop_words(work->estimate->stop),
+                   work->estimate->point.error_bound);
     if (status == LW_OK && work->estimate->rcond < NEARLY_SINGULAR)
         lw_log_add(&work->log, "The equations are nearly singular (condition of the scaled matrix about %.0e): some parameters, or sums of "
                    "them, are hardly determined, and their sigmas say so.", 1.0 / work->estimate->rcond);
@@ -188,6 +191,8 @@ static lw_status certainty(lw_work *work, double lambda, lw_error *error)
     lw_status status = lw_select_parameters(work, error);
     if (status != LW_OK) return status;
     status = keep(work, lw_certainty_make(work->decomposition, work->estimate, options, true, &work->watch, &work->certainty, error));
+    if (status == LW_OK && lambda > 0.0 && !isnan(work->certainty->effective_parameters))
+        work->estimate->point.effective_parameters = work->run.effective_parameters = work->certainty->effective_parameters;
     if (status == LW_OK && work->weight) { /* the down-weighted chi-square has no chi-square distribution */
         work->certainty->test.applies = work->certainty->test.rejected = false;
         work->certainty->test.probability = LW_UNKNOWN;

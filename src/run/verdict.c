@@ -135,10 +135,7 @@ static void certainty_cautions(lw_verdict *verdict, const lw_run *run)
 
 static void estimate_cautions(lw_verdict *verdict, const lw_run *run)
 {
-    const lw_estimate *estimate = run->estimate;
     if (run->interrupted) caution(verdict, "Interrupted: this is the iterate that was reached, not the answer.");
-    else if (estimate->stop == LW_STOP_STEPS || estimate->stop == LW_STOP_STAGNATED || estimate->stop == LW_STOP_MEMORY)
-        caution(verdict, "Not converged. %s The error bound of the model is %.1e.", lw_stop_words(estimate->stop), estimate->point.error_bound);
 }
 
 static void choice_cautions(lw_verdict *verdict, const lw_run *run)

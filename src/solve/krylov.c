@@ -143,7 +143,10 @@ static lw_status record(lw_krylov *self, lw_error *error)
     }
     const lw_bidiagonal *B = &self->B[0];
     if (status == LW_OK && B->k > 0) self->largest = fmax(self->largest, B->alpha[B->k - 1] + B->beta[B->k]);
-    if (status == LW_OK && !self->gk.ended[0]) status = keep_direction(self);
+    if (status == LW_OK && !self->gk.ended[0]) {
+        status = keep_direction(self);
+        if (status < 0) status = lw_fail_memory(error, "a warning", 200);
+    }
     return status;
 }
 

@@ -3,7 +3,7 @@
  *   sweep     decompose once, curve and choices; prints choices, error bounds, steps
  *   solve     one solve at damping FROM
  *   separate  every damping of the grid solved alone to the error bound that the sweep gives it
- *   stacked   LSQR on [A; damping L] for every STRIDE-th damping (COUNT/STRIDE), stopped at the steps that first bring
+ *   stacked   LSQR on [A; damping L] for every tenth damping (large problems: every twentieth), stopped at the steps that first bring
  *             ||L (x - x_sweep)|| / ||L x_sweep|| below 1e-3 */
 #include "bench.h"
 
@@ -18,7 +18,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { STRIDE = 10, MOST_STACKED = 3000 };
+enum { STRIDE = 10, WIDE_STRIDE = 20, LARGE = 50000, MOST_STACKED = 3000 };
 
 typedef struct setting {
     lw_problem *problem;
@@ -186,7 +186,8 @@ static void run_stacked(setting *s)
     double *model = bench_sure(LW_NEW_ARRAY(double, s->system->columns));
     bench_check(lw_system_operator(s->system, &product, &s->watch, &A, &error), &error);
     bench_check(lw_product_new(s->system->penalty, &product, &L, &error), &error);
-    for (int i = STRIDE / 2; i < curve->count; i += STRIDE) {
+    int stride = s->system->columns < LARGE ? STRIDE : WIDE_STRIDE;
+    for (int i = stride / 2; i < curve->count; i += stride) {
         lw_point point;
         double lambda = curve->row[i].point.lambda;
         if (!(curve->row[i].point.error_bound <= 1e-3)) continue;
