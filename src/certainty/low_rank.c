@@ -144,6 +144,7 @@ static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standar
         look = s->k + s->k / 5 + 1;
     }
     info->steps = s->k;
+    if (s->k >= s->m || s->k >= s->n) info->complete = true;
     return LW_OK;
 }
 

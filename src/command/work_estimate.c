@@ -121,6 +121,7 @@ static lw_status bound(lw_work *work, double lambda, lw_error *error)
         work->estimate->steps = bounded->steps;
         work->estimate->stop = bounded->stop;
         snprintf(work->engine.why, sizeof work->engine.why, "bounds: gradient projection%s", bounded->exchanges ? " and an active-set finish" : "");
+        work->run.engine = work->engine;
         lw_log_add(&work->log, "%lld of %lld parameters stand at a bound; the optimality conditions hold to %.1e (relative). No standard "
                    "deviations are given for a bounded estimate.", (long long)(work->system->columns - bounded->free),
                    (long long)work->system->columns, bounded->optimality);

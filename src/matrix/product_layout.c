@@ -12,7 +12,7 @@
 #define SHORT_LINE 64
 /* The fill is first measured on at most this many blocks. */
 #define FILL_SAMPLE 2048
-#define BUILD_PARTS 16
+#define BUILD_PARTS 64
 
 typedef struct build_state {
     const lw_sparse *A;
@@ -99,6 +99,10 @@ static void fill_part(void *state, int part)
         else
             for (int64_t p = s->A->start[b]; p < s->A->start[b + 1]; p++) store(s->out, p, scaled(s, b, p));
     }
+    if (s->out->block == 4) { /* the layout stands for these columns from now on */
+        int64_t most = s->A->columns;
+        lw_sparse_release(s->A, 4 * from < most ? 4 * from : most, 4 * to < most ? 4 * to : most);
+    }
 }
 
 static lw_status take_values(const build_state *s, int64_t places, lw_team *team, lw_error *error)
@@ -146,6 +150,7 @@ lw_status lw_lines_make(const lw_sparse *A, lw_storage storage, int plain, const
     if (!stamp) return lw_fail_memory(error, "matrix layout", (size_t)A->rows * 4);
     memset(stamp, 0xff, (size_t)A->rows * sizeof *stamp);
     lw_status status = LW_OK;
+    lw_sparse_release(A, 0, A->columns);
     out->fill = sample_fill(A, stamp);
     int easy = storage == LW_STORE_SINGLE || lw_sparse_nonzeros(A) < SHORT_LINE * A->columns;
     if (!plain && out->fill < (easy ? FILL_LIMIT_EASY : FILL_LIMIT) && A->columns / 4 < INT32_MAX) {

@@ -5,7 +5,10 @@
 #include "core/memory.h"
 
 #include <math.h>
+#include <stdint.h>
 #include <string.h>
+#include <sys/mman.h>
+#include <unistd.h>
 
 lw_status lw_sparse_new(int64_t rows, int64_t columns, int64_t nonzeros, int with_low, lw_sparse **out,
                         lw_error *error)
@@ -43,6 +46,22 @@ void lw_sparse_free(lw_sparse *A)
         lw_free(A->low);
     }
     lw_free(A);
+}
+
+/* The whole pages within [first, last). */
+static void release_pages(const void *first, const void *last)
+{
+    uintptr_t page = (uintptr_t)sysconf(_SC_PAGESIZE), from = ((uintptr_t)first + page - 1) / page * page,
+              to = (uintptr_t)last / page * page;
+    if (to > from) (void)madvise((char *)(uintptr_t)first + (from - (uintptr_t)first), to - from, MADV_DONTNEED);
+}
+
+void lw_sparse_release(const lw_sparse *A, int64_t from, int64_t to)
+{
+    if (!A->mapped) return;
+    release_pages(A->index + A->start[from], A->index + A->start[to]);
+    release_pages(A->value + A->start[from], A->value + A->start[to]);
+    if (A->low) release_pages(A->low + A->start[from], A->low + A->start[to]);
 }
 
 /* start[i + 1] holds the number of entries of line i: makes it their running sum, and next a copy to count

@@ -27,6 +27,9 @@ static inline int64_t lw_sparse_nonzeros(const lw_sparse *A)
 lw_status lw_sparse_new(int64_t rows, int64_t columns, int64_t nonzeros, int with_low, lw_sparse **out,
                         lw_error *error);
 void lw_sparse_free(lw_sparse *A);
+/** Tells the system that columns from .. to-1 of a mapped matrix are not needed soon: their pages leave the memory of the
+ * process and are read again when they are. Nothing where A is not mapped. */
+void lw_sparse_release(const lw_sparse *A, int64_t from, int64_t to);
 /** A' in compressed columns (rows sorted). Cost: two passes. */
 lw_status lw_sparse_transpose(const lw_sparse *A, lw_sparse **out, lw_error *error);
 /** From `count` triplets in any order; entries of the same place are added when add_repeated, else

@@ -48,71 +48,108 @@ static void select_place(int64_t count, double *v, int64_t k)
     }
 }
 
+/* The middle value (or the mean of both) when `middle` smaller ones stand before it; reorders. */
+static double middle_of(int64_t count, double *v, int64_t middle, bool odd)
+{
+    select_place(count, v, middle);
+    if (odd) return v[middle];
+    double below = v[0];
+    for (int64_t i = 1; i < middle; i++) below = fmax(below, v[i]);
+    return below + 0.5 * (v[middle] - below);
+}
+
+double lw_median(int64_t count, double *values)
+{
+    return middle_of(count, values, count / 2, count % 2 == 1);
+}
+
 static int by_value(const void *a, const void *b)
 {
     double x = *(const double *)a, y = *(const double *)b;
     return (x > y) - (x < y);
 }
 
-/* Keeps of many values those between two places of a sorted sample that most likely enclose the middle, when they do: the
- * passes have no branch that depends on a value. *before: how many smaller ones were left out. Values that are left out are lost.
- * Source: Floyd & Rivest, CACM 18(3):165-172, 1975. */
-static int64_t narrow(int64_t count, double *v, int64_t middle, int64_t *before)
+/* Which values count, and the absolute values between which they are looked at. */
+typedef struct window {
+    const double *values;
+    int64_t count;
+    bool skip_zero;
+    double low, high;
+} window;
+
+static bool counts(const window *w, double a)
 {
-    enum { SAMPLE = 1024, MARGIN = 96 };
-    double sample[SAMPLE];
-    uint64_t state = 1;
-    *before = 0;
-    if (count < 64 * SAMPLE) return count;
-    for (int k = 0; k < SAMPLE; k++) {
-        state = state * UINT64_C(6364136223846793005) + UINT64_C(1442695040888963407);
-        sample[k] = v[(int64_t)((state >> 16) % (uint64_t)count)];
-    }
-    qsort(sample, SAMPLE, sizeof *sample, by_value);
-    double low = sample[SAMPLE / 2 - MARGIN], high = sample[SAMPLE / 2 + MARGIN];
-    int64_t less = 0, most = 0, kept = 0;
-    for (int64_t i = 0; i < count; i++) {
-        less += v[i] < low;
-        most += v[i] <= high;
-    }
-    if (less >= middle || most <= middle) return count;
-    for (int64_t i = 0; i < count; i++) {
-        double a = v[i];
-        v[kept] = a;
-        kept += (a >= low) & (a <= high);
-    }
-    *before = less;
-    return kept;
+    return (a >= 0.0) & !(w->skip_zero & (a == 0.0)); /* not NaN */
 }
 
-double lw_median(int64_t count, double *values)
+/* Two places of a sorted sample that most likely enclose the middle of many values, so that few need to be copied.
+ * Source: Floyd & Rivest, CACM 18(3):165-172, 1975. */
+static void narrow(window *w)
 {
-    int64_t middle = count / 2, before, odd = count % 2;
-    count = narrow(count, values, middle, &before);
-    middle -= before;
-    select_place(count, values, middle);
-    if (odd) return values[middle];
-    double below = values[0];
-    for (int64_t i = 1; i < middle; i++) below = fmax(below, values[i]);
-    return below + 0.5 * (values[middle] - below);
+    enum { SAMPLE = 1024, MARGIN = 96, TRIES = 4 * SAMPLE };
+    double sample[SAMPLE];
+    uint64_t state = 1;
+    int taken = 0;
+    if (w->count < 64 * SAMPLE) return;
+    for (int k = 0; k < TRIES && taken < SAMPLE; k++) {
+        state = state * UINT64_C(6364136223846793005) + UINT64_C(1442695040888963407);
+        double a = fabs(w->values[(int64_t)((state >> 16) % (uint64_t)w->count)]);
+        if (counts(w, a)) sample[taken++] = a;
+    }
+    if (taken < SAMPLE) return;
+    qsort(sample, SAMPLE, sizeof *sample, by_value);
+    w->low = sample[SAMPLE / 2 - MARGIN];
+    w->high = sample[SAMPLE / 2 + MARGIN];
+}
+
+static void count_window(const window *w, int64_t *less, int64_t *most)
+{
+    *less = *most = 0;
+    for (int64_t i = 0; i < w->count; i++) {
+        double a = fabs(w->values[i]);
+        *less += counts(w, a) & (a < w->low);
+        *most += counts(w, a) & (a <= w->high);
+    }
+}
+
+static lw_status find_median(window *w, int64_t n, double *median, lw_error *error)
+{
+    int64_t less, most, kept = 0;
+    narrow(w);
+    count_window(w, &less, &most);
+    if (less >= n / 2 || most <= n / 2) {
+        w->low = 0.0;
+        w->high = (double)INFINITY;
+        less = 0;
+        most = n;
+    }
+    double *v = LW_NEW_ARRAY(double, most - less + 1); /* one place more: written before it is known to count */
+    if (v == NULL) return lw_fail_memory(error, "a median", (size_t)(most - less) * sizeof(double));
+    for (int64_t i = 0; i < w->count; i++) {
+        double a = fabs(w->values[i]);
+        v[kept] = a;
+        kept += counts(w, a) & (a >= w->low) & (a <= w->high);
+    }
+    *median = middle_of(kept, v, n / 2 - less, n % 2 == 1);
+    lw_free(v);
+    return LW_OK;
 }
 
 lw_status lw_range_find(int64_t count, const double *values, bool skip_zero, lw_range *out, lw_error *error)
 {
+    window w = {values, count, skip_zero, 0.0, (double)INFINITY};
+    int64_t n = 0;
+    double smallest = (double)INFINITY, largest = 0.0, median = 0.0;
     *out = (lw_range){0};
     if (values == NULL) return LW_OK;
-    double *kept = LW_NEW_ARRAY(double, count);
-    if (kept == NULL) return lw_fail_memory(error, "a median", (size_t)count * sizeof(double));
-    int64_t n = 0;
-    double smallest = (double)INFINITY, largest = 0.0;
     for (int64_t i = 0; i < count; i++) {
         double a = fabs(values[i]);
-        if (isnan(a) || (skip_zero && a == 0.0)) continue;
-        kept[n++] = a;
+        if (!counts(&w, a)) continue;
+        n++;
         smallest = fmin(smallest, a);
         largest = fmax(largest, a);
     }
-    if (n > 0) *out = (lw_range){smallest, lw_median(n, kept), largest, n};
-    lw_free(kept);
-    return LW_OK;
+    lw_status status = n > 0 ? find_median(&w, n, &median, error) : LW_OK;
+    if (status == LW_OK && n > 0) *out = (lw_range){smallest, median, largest, n};
+    return status;
 }

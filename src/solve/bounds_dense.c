@@ -9,6 +9,7 @@
 #include <math.h>
 #include <string.h>
 
+#define CORRECTIONS 2
 #define SIGN 1e-12 /* of ||c||: how wrong the sign of g may be by rounding */
 
 typedef struct finish {
@@ -164,6 +165,36 @@ static int64_t worst_sign(const finish *f, double allowed)
     return worst;
 }
 
+/* R'R s = -K_F'(K t - b): what rounding left of the gradient, with K itself instead of its factor, corrects the
+ * free parameters. Source: Bjorck, Numerical Methods for Least Squares Problems, SIAM 1996, 6.6.5 (corrected
+ * seminormal equations). */
+static lw_status correct(finish *f, lw_error *error)
+{
+    int64_t free = 0, k = f->k;
+    lw_box *box = f->box;
+    lw_dense_qr qr = {0};
+    for (int64_t j = 0; j < f->n; j++)
+        if (box->set[j] == 0) f->place[free++] = j;
+    if (free == 0) return LW_OK;
+    double *part = LW_NEW_ARRAY(double, k *free);
+    if (part == NULL) return lw_fail_memory(error, "the bounded problem", (size_t)lw_bytes(k * free, 8));
+    for (int64_t p = 0; p < free; p++) memcpy(part + p * k, f->H + f->place[p] * k, (size_t)k * sizeof(double));
+    lw_status status = lw_dense_qr_make(k, free, part, -1.0, &qr, error);
+    for (int round = 0; status == LW_OK && qr.rank == free && round < CORRECTIONS; round++) {
+        lw_box_refresh(box);
+        for (int64_t p = 0; p < free; p++) f->step[p] = -box->g[f->place[qr.pivot[p]]];
+        lw_dense_qr_solve_r(&qr, 1, 1, f->step, free);
+        lw_dense_qr_solve_r(&qr, 0, 1, f->step, free);
+        for (int64_t p = 0; p < free; p++) {
+            int64_t j = f->place[qr.pivot[p]];
+            double to = box->t[j] + f->step[p];
+            if (to > box->low[j] && to < box->high[j]) box->t[j] = to;
+        }
+    }
+    lw_dense_qr_clear(&qr);
+    return status;
+}
+
 lw_status lw_box_finish(lw_box *box, lw_error *error)
 {
     finish f;
@@ -188,6 +219,7 @@ lw_status lw_box_finish(lw_box *box, lw_error *error)
         done = released < 0;
         if (!done) box->set[released] = 0;
     }
+    if (done) status = correct(&f, error);
     finish_clear(&f);
     return status;
 }

@@ -50,6 +50,7 @@ int main(void)
     srunner_add_suite(runner, suite_variance_components());
     srunner_add_suite(runner, suite_memory_faults());
     srunner_add_suite(runner, suite_probe());
+    srunner_add_suite(runner, suite_sigma_kinds());
     srunner_set_tap(runner, "-");
     srunner_run_all(runner, CK_SILENT);
     srunner_free(runner);

@@ -17,6 +17,7 @@ Suite *suite_damped(void);
 Suite *suite_variance_components(void);
 Suite *suite_memory_faults(void);
 Suite *suite_probe(void);
+Suite *suite_sigma_kinds(void);
 
 /** Decomposed, estimated and with its certainty; asserts success. Everything is owned by the struct. */
 typedef struct adjusted {

@@ -21,6 +21,7 @@ int main(void)
     srunner_add_suite(runner, suite_qr());
     srunner_add_suite(runner, suite_robust());
     srunner_add_suite(runner, suite_standard_form());
+    srunner_add_suite(runner, suite_stacked());
     srunner_set_tap(runner, "-");
     srunner_run_all(runner, CK_SILENT);
     srunner_free(runner);

@@ -19,6 +19,7 @@ Suite *suite_lsqr(void);
 Suite *suite_nonlinear_cg(void);
 Suite *suite_qr(void);
 Suite *suite_robust(void);
+Suite *suite_stacked(void);
 Suite *suite_standard_form(void);
 
 #endif

@@ -74,6 +74,26 @@ START_TEST(integers_with_exact_answers)
 }
 END_TEST
 
+/* (x + 1)^2 + (y - 2)^2 + (x + y - 2)^2, x >= 0: x = 0, y = 2, to the last bit, and so with rows that are weighted. */
+START_TEST(exact_to_rounding)
+{
+    const double A[] = {1, 0, 0, 1, 1, 1}, b[] = {-1, 2, 2}, lower[] = {0, -(double)INFINITY},
+                 upper[] = {(double)INFINITY, (double)INFINITY}, sigma[][3] = {{1, 1, 1}, {0.3, 0.7, 0.7}, {3, 0.1, 0.1}};
+    for (int k = 0; k < 3; k++) {
+        double x[2];
+        lw_problem *problem = problem_from_dense(3, 2, A, b, sigma[k]);
+        problem_set_bounds(problem, lower, upper);
+        lw_system *system = system_of(problem, LW_PREFER_SMALLEST);
+        lw_bounded *bounded = solve(system, 0, 0, x);
+        ck_assert_double_eq(x[0], 0);
+        ck_assert_double_eq(x[1], 2);
+        lw_bounded_free(bounded);
+        lw_system_free(system);
+        lw_problem_free(problem);
+    }
+}
+END_TEST
+
 START_TEST(agrees_with_another_solver)
 {
     for (size_t k = 0; k < sizeof bounded_case / sizeof *bounded_case; k++)
@@ -215,6 +235,7 @@ Suite *suite_bounds(void)
     TCase *tcase = tcase_create("bounds");
     tcase_add_test(tcase, integers_with_exact_answers);
     tcase_add_test(tcase, agrees_with_another_solver);
+    tcase_add_test(tcase, exact_to_rounding);
     tcase_add_test(tcase, both_ways_agree_with_a_penalty);
     tcase_add_test(tcase, large_problem_is_optimal);
     tcase_add_test(tcase, closed_box_and_zero_side);

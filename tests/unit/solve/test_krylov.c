@@ -308,38 +308,6 @@ START_TEST(many_right_hand_sides)
 }
 END_TEST
 
-/* The stacked system, which stands in where L'L cannot be factored, gives the same estimate. */
-START_TEST(stacked_estimate)
-{
-    static fixture f;
-    set_up(&f);
-    double lambda = 0.1 * f.s[0];
-    closed_form c = solve_exactly(&f, lambda);
-    lw_solve_options options = {.tolerance = 1e-10};
-    lw_decomposition *d = NULL;
-    ck_assert_int_eq(lw_engine_lsqr.decompose(f.system, lambda, &options, NULL, &d, NULL), LW_OK);
-    lw_krylov *self = (lw_krylov *)d;
-    lw_standard_form_free(self->form); /* as if the budget had not allowed it */
-    self->form = NULL;
-    ck_assert_int_eq(lw_system_operator(f.system, NULL, NULL, &self->plain, NULL), LW_OK);
-    self->op = self->plain;
-    lw_estimate *estimate = NULL;
-    ck_assert_int_eq(d->methods->estimate(d, lambda, NULL, &estimate, NULL), LW_OK);
-    ck_assert_int_eq(estimate->stop, LW_STOP_TOLERANCE);
-    for (int j = 0; j < N; j++) ck_assert_double_eq_tol(estimate->x[j], c.x[j], 1e-9 * c.size);
-    lw_estimate_free(estimate);
-    double z[N];
-    lw_point point;
-    ck_assert_int_eq(d->methods->evaluate(d, 1, &lambda, 0, &point, z, NULL, NULL), LW_OK);
-    ck_assert_double_eq_tol(point.misfit, c.misfit, 1e-9 * c.misfit);
-    int exhausted = 0;
-    ck_assert_int_eq(d->methods->extend(d, 5, &exhausted, NULL, NULL), LW_OK);
-    ck_assert_int_eq(exhausted, 1);
-    lw_decomposition_free(d);
-    tear_down(&f);
-}
-END_TEST
-
 /* Every allocation of a sweep's decomposition fails once: an error, no leak, no crash. */
 static bool fail_at(void *state)
 {
@@ -426,7 +394,6 @@ Suite *suite_krylov(void)
     tcase_add_test(tcase, basis_that_outgrows_the_budget);
     tcase_add_test(tcase, probes_estimate_the_trace);
     tcase_add_test(tcase, many_right_hand_sides);
-    tcase_add_test(tcase, stacked_estimate);
     tcase_add_test(tcase, failing_allocations);
     tcase_add_test(tcase, zero_observations);
     tcase_add_test(tcase, largest_singular_value);
