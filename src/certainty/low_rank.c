@@ -13,7 +13,10 @@
 
 #define STREAM 74
 #define LEAST_STEPS 16
-#define ENOUGH 2e-3 /* share of the effective parameters that a fifth more steps may still add */
+/* On a tomographic problem of 2500 cells these left the standard deviations 1 % too large on the average and 2 % at
+ * the worst: steps for each effective parameter seen, and what a fifth more steps may still add to those. */
+#define STEPS_EACH 2.5
+#define STILL_ADDED 0.12
 #define BLOCK 8
 #define DEPENDENT 1e-12 /* of a vector that is left after orthogonalization: the space is exhausted */
 
@@ -119,7 +122,7 @@ static lw_status effective(const space *s, double lambda, double *out, lw_error 
     return status;
 }
 
-/* Steps until a fifth more adds next to nothing. The start is random: the data need not reach every direction. */
+/* Steps until there are enough of them (see above). The start is random: the data need not reach every direction. */
 static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standard_form *form, lw_low_rank *info,
                       lw_error *error)
 {
@@ -139,7 +142,7 @@ static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standar
         double before = info->effective;
         status = effective(s, lambda, &info->effective, error);
         if (status != LW_OK) return status;
-        if (info->effective - before <= ENOUGH * info->effective && 4 * s->k >= 5 * (int64_t)info->effective)
+        if (info->effective - before <= STILL_ADDED * info->effective && (double)s->k >= STEPS_EACH * info->effective)
             info->complete = true;
         look = s->k + s->k / 5 + 1;
     }

@@ -17,12 +17,12 @@
 typedef struct lw_low_rank {
     int64_t steps;    /**< k */
     double effective; /**< sum of s^2 / (s^2 + lambda^2): a lower bound of the effective parameters */
-    bool complete;    /**< further steps added nothing, or the data are exhausted */
+    bool complete;    /**< as many steps as are enough, or the data are exhausted */
 } lw_low_rank;
 
 /** Is it possible for this decomposition (iterative, damped, in standard form)? */
 bool lw_low_rank_applies(const lw_cofactor *cofactor);
-/** variance: columns, z units, before the factor. Steps are made until they add nothing, at most as many as half the
+/** variance: columns, z units, before the factor. Steps are made until they are enough, at most as many as half the
  *  memory budget holds or `most` (0 no limit). LW_QUALIFIED, reason in error: the prior covariance does not fit. */
 lw_status lw_variance_low_rank(lw_cofactor *cofactor, int64_t most, const lw_watch *watch, double *variance,
                                lw_low_rank *info, lw_error *error);

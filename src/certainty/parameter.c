@@ -34,8 +34,8 @@ static lw_status bound_from_above(lw_certainty_work *w, lw_error *error)
     w->kind = LW_SIGMA_UPPER_BOUND;
     return lw_log_add(lw_watch_log(w->watch),
                       "The standard deviations are upper bounds (prior covariance less an update of rank %lld): samples would take "
-                      "too long. They are near the truth from about 1.25 times the effective parameters on; here %lld steps saw "
-                      "%.0f of them%s.",
+                      "too long. They come near the truth with 1.25 to 3 steps for each effective parameter; %lld steps saw %.0f "
+                      "effective parameters%s.",
                       (long long)info.steps, (long long)info.steps, info.effective,
                       info.complete ? "" : ", as many as --memory holds: they may be much too large");
 }

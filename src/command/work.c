@@ -120,6 +120,7 @@ lw_status lw_work_read(lw_work *work, lw_arguments *arguments, lw_error *error)
         if (status == LW_OK) status = more;
         if (!arguments->variance_named) arguments->certainty.variance_estimated = !work->problem->sigma;
     }
+    lw_memory_trim();
     work->run.seconds.read = lw_work_lap(work);
     lend(work);
     return status;

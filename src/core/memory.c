@@ -137,6 +137,11 @@ void lw_memory_tune(void)
     (void)mallopt(M_TOP_PAD, 1 << 20);
 }
 
+void lw_memory_trim(void)
+{
+    (void)malloc_trim((size_t)1 << 20);
+}
+
 int64_t lw_memory_peak(void)
 {
     struct rusage usage;

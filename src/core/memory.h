@@ -35,6 +35,8 @@ void lw_memory_set_gate(lw_memory_gate *gate, void *state);
 /** Raises the malloc thresholds so that large work arrays are reused instead of mapped anew (design: halved the time of
  *  a 20k-parameter factorization). Once, at program start. */
 void lw_memory_tune(void);
+/** Gives free memory between blocks back to the system: once, after reading, whose scratch would else stand beside the work. */
+void lw_memory_trim(void);
 /** Largest resident size so far, bytes (getrusage). */
 int64_t lw_memory_peak(void);
 /** Memory that the system says is available now, bytes; 0 unknown. Only used to refuse before the work starts. */

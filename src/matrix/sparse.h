@@ -30,6 +30,12 @@ void lw_sparse_free(lw_sparse *A);
 /** Tells the system that columns from .. to-1 of a mapped matrix are not needed soon: their pages leave the memory of the
  * process and are read again when they are. Nothing where A is not mapped. */
 void lw_sparse_release(const lw_sparse *A, int64_t from, int64_t to);
+/** The same behind a pass over the columns that has come to column j, now and then. */
+static inline void lw_sparse_release_behind(const lw_sparse *A, int64_t j)
+{
+    enum { STRIDE = 4096 };
+    if (A->mapped && (j + 1) % STRIDE == 0) lw_sparse_release(A, j + 1 - STRIDE, j + 1);
+}
 /** A' in compressed columns (rows sorted). Cost: two passes. */
 lw_status lw_sparse_transpose(const lw_sparse *A, lw_sparse **out, lw_error *error);
 /** From `count` triplets in any order; entries of the same place are added when add_repeated, else

@@ -229,6 +229,7 @@ lw_status lw_system_residual(const lw_system *system, const double *z, const dou
         int64_t j = system->parameter_of[c];
         double dx = system->scale[c] * z[c];
         for (int64_t p = A->start[j]; p < A->start[j + 1]; p++) residual[A->index[p]] += A->value[p] * dx;
+        lw_sparse_release_behind(A, j);
     }
     for (int64_t k = 0; k < system->priors; k++) {
         int64_t c = system->column_of[system->prior_parameter[k]];

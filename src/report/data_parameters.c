@@ -6,14 +6,14 @@
 #include <math.h>
 #include <stdlib.h>
 
-/* Largest number of parameters that one observation touches. */
+/* Largest number of parameters that one observation touches; three stand for all above. */
 static lw_status widest_row(const lw_problem *problem, int32_t *widest, lw_error *error)
 {
     const lw_sparse *A = problem->design;
     int32_t *width = LW_NEW_ZEROS(int32_t, problem->m);
     if (width == NULL) return lw_fail_memory(error, "report", (size_t)problem->m * sizeof(int32_t));
     *widest = 0;
-    for (int64_t k = 0; k < lw_sparse_nonzeros(A); k++)
+    for (int64_t k = 0; k < lw_sparse_nonzeros(A) && *widest < 3; k++)
         if (++width[A->index[k]] > *widest) *widest = width[A->index[k]];
     lw_free(width);
     return LW_OK;

@@ -106,8 +106,8 @@ lw_status lw_choose_planned(lw_system *system, double lambda, const lw_solve_opt
     if (status < 0) return status;
     int needed = lw_choose_needs(system, lambda, options) != 0;
     double n = (double)system->columns, factors = options && options->sweep ? SWEEP_FACTORS : 1;
-    double full = n * n * n / 3; /* A'A is full, or nearly, when its products outnumber its places */
-    if (!needed && cost > n * n && full * factors / FASTER > 4 * nonzeros * STEPS) {
+    double full = n * n * n / 3; /* the factor is nearly full when the products of A'A come near its places */
+    if (!needed && 3 * cost > n * n && full * factors / FASTER > 4 * nonzeros * STEPS) {
         char reason[128];
         snprintf(reason, sizeof reason, "a nearly full factor would take %.2g operations against some %.2g",
                  full * factors, 4 * nonzeros * STEPS);

@@ -132,6 +132,14 @@ def _():
     equal(case.left(), [])
 
 
+def files_in(folder):
+    """How many files a folder holds; 0 when it was renamed between two looks."""
+    try:
+        return len(os.listdir(folder))
+    except FileNotFoundError:
+        return 0
+
+
 @test('killed at any moment: no run folder of the final name, or a whole one')
 def _():
     case = Case().copy_of(os.path.join(DEMO, 'cross-hole'))
@@ -147,7 +155,7 @@ def _():
             end, want = time.monotonic() + 60, (k - 12) % 6
             while child.poll() is None and time.monotonic() < end:
                 siblings = [n for n in os.listdir(case.folder) if n.startswith(f'out{k}.')]
-                if siblings and len(os.listdir(os.path.join(case.folder, siblings[0]))) >= want:
+                if siblings and files_in(os.path.join(case.folder, siblings[0])) >= want:
                     break
         child.send_signal(signal.SIGKILL)
         child.wait()

@@ -12,7 +12,7 @@
 #include <math.h>
 
 enum { SIDE = 50, CELLS = SIDE * SIDE, RAYS = 500 };
-#define LAMBDA 400.0
+#define LAMBDA 30.0
 
 /* Straight rays across side x side cells, each with the length (in hundredths of the side) that steps along it count. */
 static lw_problem *rays_through(int side, int rays, uint64_t seed)
@@ -111,19 +111,29 @@ static void damped_clear(damped *d)
  * several seeds; the low-rank bound. */
 START_TEST(three_kinds_of_one_problem)
 {
-    damped d = damped_by("lsqr", rays_through(SIDE, RAYS, 5), LW_PREFER_SMALLEST, LAMBDA);
+    damped d = damped_by("lsqr", rays_through(SIDE, RAYS, 5), LW_PREFER_FLATTEST, LAMBDA);
     lw_error error = {0};
     double *variance = LW_NEW_ARRAY(double, CELLS);
     for (int k = 0; k < 2; k++) {
         lw_certainty_options options = default_options();
+        lw_engine_choice choice;
+        lw_solve_options solve = {.engine = k ? "cholesky" : "lsqr"};
+        lw_decomposition *own = NULL;
+        lw_estimate *estimate = NULL;
+        lw_certainty *c = NULL;
         options.meaning = LW_MEANS_POSTERIOR;
-        adjusted a = adjust(d.problem, k ? "cholesky" : "lsqr", NULL, 0, LAMBDA, &options);
+        options.reliability = false;
+        ck_assert_int_eq(lw_decompose(d.system, LAMBDA, &solve, NULL, &choice, &own, &error), LW_OK);
+        ck_assert_int_eq(own->methods->estimate(own, LAMBDA, NULL, &estimate, &error), LW_OK);
+        ck_assert_int_eq(lw_certainty_make(own, estimate, &options, true, NULL, &c, &error), LW_OK);
         for (int j = 0; j < CELLS; j++) {
-            ck_assert_int_eq(a.certainty->sigma_kind[j], LW_SIGMA_EXACT);
-            ck_close(a.certainty->sigma[j], sqrt(d.Q[j + j * CELLS]) * d.system->scale[j], 1e-8);
+            ck_assert_int_eq(c->sigma_kind[j], LW_SIGMA_EXACT);
+            ck_close(c->sigma[j], sqrt(d.Q[j + j * CELLS]) * d.system->scale[j], 1e-8);
         }
-        ck_close(a.certainty->effective_parameters, d.trace, 1e-8);
-        adjusted_clear(&a);
+        ck_close(c->effective_parameters, d.trace, 1e-8);
+        lw_certainty_free(c);
+        lw_estimate_free(estimate);
+        lw_decomposition_free(own);
     }
     const int samples = 60, runs = 5;
     for (int run = 0; run < runs; run++) {
@@ -136,12 +146,11 @@ START_TEST(three_kinds_of_one_problem)
     lw_low_rank info;
     ck_assert_int_eq(lw_variance_low_rank(d.cofactor, 0, NULL, variance, &info, &error), LW_OK);
     ck_assert(info.complete && info.steps < RAYS);
-    ck_assert_double_ge((double)info.steps, 1.25 * info.effective);
+    ck_assert_double_ge((double)info.steps, 1.25 * d.trace);
     ck_assert_double_le(info.effective, d.trace * (1 + 1e-9));
-    ck_assert_double_ge(info.effective, d.trace * 0.99);
     for (int j = 0; j < CELLS; j++) {
         ck_assert_double_ge(variance[j], d.Q[j + j * CELLS] * (1 - 1e-10));
-        ck_assert_double_le(sqrt(variance[j]), 1.03 * sqrt(d.Q[j + j * CELLS]));
+        ck_assert_double_le(sqrt(variance[j]), 1.04 * sqrt(d.Q[j + j * CELLS]));
     }
     lw_free(variance);
     damped_clear(&d);
