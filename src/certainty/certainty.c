@@ -106,12 +106,14 @@ static lw_status read_inverse(lw_certainty_work *w, bool last, lw_error *error)
 }
 
 /* Rank: of the estimate; of our own factor (which exists only where it is full). Effective parameters: the
- * trace of the exact resolution, else of the estimate (a random probe, maybe), else of the probed resolution. */
+ * trace of the exact resolution, else of the estimate (a random probe, maybe), else of the probed resolution.
+ */
 static void make_test(lw_certainty_work *w)
 {
     const lw_point *point = &w->estimate->point;
     bool exact = w->damped && w->cofactor->kind != LW_COFACTOR_NONE && !isnan(w->out->effective_parameters);
-    if (!exact && !isnan(point->effective_parameters)) w->out->effective_parameters = point->effective_parameters;
+    if (!exact && !isnan(point->effective_parameters))
+        w->out->effective_parameters = point->effective_parameters;
     double effective = w->out->effective_parameters;
     int64_t rank = w->estimate->rank;
     if (rank < 0 && w->cofactor->own_factor && w->cofactor->kind != LW_COFACTOR_NONE)

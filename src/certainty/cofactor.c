@@ -42,7 +42,10 @@ static lw_status factor_own(lw_cofactor *c, const lw_watch *watch, lw_error *err
     lw_error quiet = {0};
     if (c->columns == 0 || c->columns > LW_COFACTOR_MOST || system->conditions > 0 || c->defect > 0)
         return LW_OK;
-    lw_status status = normal_matrix(system, c->lambda, watch, &normal, error);
+    lw_status status = lw_system_matrix(system, watch, error);
+    if (status != LW_OK) return status;
+    if (lw_sparse_gram_fits(system->matrix, watch, "", &quiet) != LW_OK) return LW_OK;
+    status = normal_matrix(system, c->lambda, watch, &normal, error);
     if (status == LW_OK) status = lw_cholesky_analyse(normal, watch, &c->own_factor, &size, error);
     if (status == LW_OK &&
         lw_watch_budget(watch, lw_bytes(2, size.bytes), "standard deviations", "", &quiet) == LW_OK) {

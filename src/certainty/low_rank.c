@@ -13,8 +13,9 @@
 
 #define STREAM 74
 #define LEAST_STEPS 16
-/* On a tomographic problem of 2500 cells these left the standard deviations 1 % too large on the average and 2 % at
- * the worst: steps for each effective parameter seen, and what a fifth more steps may still add to those. */
+/* On a tomographic problem of 2500 cells these left the standard deviations 1 % too large on the average and
+ * 2 % at the worst: steps for each effective parameter seen, and what a fifth more steps may still add to
+ * those. */
 #define STEPS_EACH 2.5
 #define STILL_ADDED 0.12
 #define BLOCK 8
@@ -24,7 +25,7 @@ typedef struct space {
     lw_operator *op;
     int64_t m, n, k, most;
     double *U, *V;        /* m x most, n x most */
-    double *alpha, *beta;  /* B: alpha on the diagonal, beta_i = B(i, i-1) */
+    double *alpha, *beta; /* B: alpha on the diagonal, beta_i = B(i, i-1) */
     double *product;      /* most */
 } space;
 
@@ -60,9 +61,10 @@ static lw_status space_new(space *s, lw_krylov *krylov, int64_t most, const lw_w
     int64_t shorter = s->m < s->n ? s->m : s->n, room = lw_watch_memory(watch) / 2 / (8 * (s->m + s->n));
     s->most = shorter < room ? shorter : room;
     if (most > 0 && most < s->most) s->most = most;
-    if (s->most < 1) return lw_fail(error, LW_QUALIFIED, "a basis for standard deviations does not fit --memory");
-    s->U = LW_NEW_ARRAY(double, s->m *s->most);
-    s->V = LW_NEW_ARRAY(double, s->n *s->most);
+    if (s->most < 1)
+        return lw_fail(error, LW_QUALIFIED, "a basis for standard deviations does not fit --memory");
+    s->U = LW_NEW_ARRAY(double, s->m * s->most);
+    s->V = LW_NEW_ARRAY(double, s->n * s->most);
     s->alpha = LW_NEW_ARRAY(double, s->most);
     s->beta = LW_NEW_ZEROS(double, s->most);
     s->product = LW_NEW_ARRAY(double, s->most);
@@ -94,7 +96,8 @@ static lw_status small_svd(const space *s, double *value, double *R, lw_error *e
 {
     int64_t k = s->k;
     double *B = LW_NEW_ZEROS(double, k *k), *P = LW_NEW_ARRAY(double, k *k), *Rt = LW_NEW_ARRAY(double, k *k);
-    lw_status status = B && P && Rt ? LW_OK : lw_fail_memory(error, "standard deviations", (size_t)(3 * k * k) * 8);
+    lw_status status =
+        B && P && Rt ? LW_OK : lw_fail_memory(error, "standard deviations", (size_t)(3 * k * k) * 8);
     for (int64_t i = 0; i < k && status == LW_OK; i++) {
         B[i + i * k] = s->alpha[i];
         if (i > 0) B[i + (i - 1) * k] = s->beta[i];
@@ -115,16 +118,18 @@ static double share(double s, double lambda)
 static lw_status effective(const space *s, double lambda, double *out, lw_error *error)
 {
     double *value = LW_NEW_ARRAY(double, s->k);
-    lw_status status = value ? small_svd(s, value, NULL, error) : lw_fail_memory(error, "standard deviations", 8);
+    lw_status status =
+        value ? small_svd(s, value, NULL, error) : lw_fail_memory(error, "standard deviations", 8);
     *out = 0;
     for (int64_t i = 0; i < s->k && status == LW_OK; i++) *out += share(value[i], lambda);
     lw_free(value);
     return status;
 }
 
-/* Steps until there are enough of them (see above). The start is random: the data need not reach every direction. */
-static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standard_form *form, lw_low_rank *info,
-                      lw_error *error)
+/* Steps until there are enough of them (see above). The start is random: the data need not reach every
+ * direction. */
+static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standard_form *form,
+                      lw_low_rank *info, lw_error *error)
 {
     lw_random *random = NULL;
     lw_status status = lw_random_new(lw_watch_seed(watch), STREAM, &random, error);
@@ -137,12 +142,14 @@ static lw_status grow(space *s, double lambda, const lw_watch *watch, lw_standar
     while (s->k < s->most && !info->complete) {
         if (!space_step(s)) info->complete = true;
         if (s->k % 8 == 0) lw_watch_tick(watch, "standard deviations", (double)s->k, 0.0, "");
-        if (lw_watch_cancelled(watch)) return lw_fail(error, LW_INTERRUPTED, "interrupted during standard deviations");
+        if (lw_watch_cancelled(watch))
+            return lw_fail(error, LW_INTERRUPTED, "interrupted during standard deviations");
         if (s->k < look || s->k == 0) continue;
         double before = info->effective;
         status = effective(s, lambda, &info->effective, error);
         if (status != LW_OK) return status;
-        if (info->effective - before <= STILL_ADDED * info->effective && (double)s->k >= STEPS_EACH * info->effective)
+        if (info->effective - before <= STILL_ADDED * info->effective &&
+            (double)s->k >= STEPS_EACH * info->effective)
             info->complete = true;
         look = s->k + s->k / 5 + 1;
     }
@@ -180,9 +187,12 @@ static lw_status subtract_update(const space *s, lw_standard_form *form, double 
                                  int64_t columns, lw_error *error)
 {
     int64_t k = s->k;
-    double *value = LW_NEW_ARRAY(double, k), *R = LW_NEW_ARRAY(double, k *k), *zero = LW_NEW_ZEROS(double, s->m);
+    double *value = LW_NEW_ARRAY(double, k), *R = LW_NEW_ARRAY(double, k *k),
+           *zero = LW_NEW_ZEROS(double, s->m);
     double *w = LW_NEW_ARRAY(double, s->n *BLOCK), *z = LW_NEW_ARRAY(double, columns *BLOCK);
-    lw_status status = value && R && zero && w && z ? LW_OK : lw_fail_memory(error, "standard deviations", (size_t)(k * k) * 8);
+    lw_status status = value && R && zero && w && z
+                           ? LW_OK
+                           : lw_fail_memory(error, "standard deviations", (size_t)(k * k) * 8);
     if (status == LW_OK) status = small_svd(s, value, R, error);
     for (int64_t at = 0; at < k && status == LW_OK; at += BLOCK) {
         int64_t some = k - at < BLOCK ? k - at : BLOCK;
@@ -209,8 +219,10 @@ lw_status lw_variance_low_rank(lw_cofactor *c, int64_t most, const lw_watch *wat
     *info = (lw_low_rank){0};
     double *change = LW_NEW_ARRAY(double, n), *null = LW_NEW_ARRAY(double, n);
     lw_status status = change && null ? LW_OK : lw_fail_memory(error, "standard deviations", (size_t)n * 16);
-    if (status == LW_OK) status = space_new(&s, krylov, most, watch, error);
-    else s = (space){0};
+    if (status == LW_OK)
+        status = space_new(&s, krylov, most, watch, error);
+    else
+        s = (space){0};
     if (status == LW_OK) status = lw_standard_form_prior(krylov->form, watch, change, null, error);
     if (status == LW_OK) status = prior_diagonal(krylov->form, system, watch, variance, error);
     if (status == LW_OK) status = grow(&s, c->lambda, watch, krylov->form, info, error);

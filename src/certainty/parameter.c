@@ -24,20 +24,27 @@ static double sampling_cost(const lw_certainty_work *w)
     return 2 * samples * (double)w->estimate->steps * (double)lw_sparse_nonzeros(w->system->problem->design);
 }
 
+/* Nanoseconds or so that orthogonalizing twice takes for each earlier vector and place of a vector. */
+#define ORTHOGONAL 3.2
+
 /* Upper bounds from a bidiagonalization; samples where they cannot be had. */
 static lw_status bound_from_above(lw_certainty_work *w, lw_error *error)
 {
     lw_low_rank info;
-    lw_status status = lw_variance_low_rank(w->cofactor, 0, w->watch, w->variance, &info, error);
+    double sides = (double)(w->system->rows + w->system->columns);
+    int64_t most = (int64_t)sqrt(2 * LW_SIGMA_WORK / (ORTHOGONAL * sides)) + 1;
+    lw_status status = lw_variance_low_rank(w->cofactor, most, w->watch, w->variance, &info, error);
     if (status == LW_QUALIFIED) return sample(w, error);
     if (status != LW_OK) return status;
     w->kind = LW_SIGMA_UPPER_BOUND;
     return lw_log_add(lw_watch_log(w->watch),
-                      "The standard deviations are upper bounds (prior covariance less an update of rank %lld): samples would take "
-                      "too long. They come near the truth with 1.25 to 3 steps for each effective parameter; %lld steps saw %.0f "
+                      "The standard deviations are upper bounds (prior covariance less an update of rank "
+                      "%lld): samples would take "
+                      "too long. They come near the truth with 1.25 to 3 steps for each effective parameter; "
+                      "%lld steps saw %.0f "
                       "effective parameters%s.",
                       (long long)info.steps, (long long)info.steps, info.effective,
-                      info.complete ? "" : ", as many as --memory holds: they may be much too large");
+                      info.complete ? "" : ", as many as memory and time allow: they may be much too large");
 }
 
 /* Cost (columns x nonzeros) of refined variances that a sparse factor may take: about a tenth of a second.

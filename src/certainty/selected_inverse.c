@@ -114,10 +114,11 @@ static lw_status invert_supernode(const lw_factor_view *v, const int64_t *supern
     }
     lw_status status = lw_dense_invert_lower(width, l, ld, error);
     if (status != LW_OK) return status;
-    for (int64_t j = 0; j < width && below > 0; j += PANEL) { /* the lower triangle by panels: half the work */
+    for (int64_t j = 0; j < width && below > 0;
+         j += PANEL) { /* the lower triangle by panels: half the work */
         int64_t panel = width - j < PANEL ? width - j : PANEL;
-        lw_dense_multiply(1, 0, width - j, panel, below, -1, w->y + j * below, below, l + width + j * ld, ld, 1,
-                          l + j + j * ld, ld);
+        lw_dense_multiply(1, 0, width - j, panel, below, -1, w->y + j * below, below, l + width + j * ld, ld,
+                          1, l + j + j * ld, ld);
     }
     for (int64_t j = 1; j < width; j++)
         for (int64_t i = 0; i < j; i++) l[i + j * ld] = l[j + i * ld];

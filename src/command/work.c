@@ -156,6 +156,11 @@ lw_status lw_work_decompose(lw_work *work, double lambda, bool sweep, lw_error *
     options.sweep = sweep;
     lw_status status =
         lw_decompose(work->system, lambda, &options, &work->watch, &work->engine, &work->decomposition, error);
+    const lw_engine *engine = status >= 0 ? lw_engine_find(work->decomposition->methods->engine) : NULL;
+    if (options.storage == LW_STORE_SINGLE && engine)
+        lw_log_add(&work->log, engine->abilities & LW_DIRECT ? "--storage single has no effect: the %s engine factors in double precision."
+                                                             : "The %s engine kept the coefficients in single precision; sums are double.",
+                   engine->name);
     lend(work);
     return status;
 }

@@ -135,9 +135,10 @@ static lw_status plain(lw_work *work, double lambda, lw_error *error)
     lw_status status = LW_OK;
     if (!work->decomposition) status = lw_work_decompose(work, lambda, false, error);
     if (status >= 0) status = keep(work, status);
-    if (status == LW_OK)
-        status = keep(work, work->decomposition->methods->estimate(work->decomposition, lambda, &work->watch, &work->estimate, error));
-    if (status == LW_OK && work->qualified == LW_NOT_CONVERGED)
+    if (status != LW_OK) return status;
+    lw_status reached = work->decomposition->methods->estimate(work->decomposition, lambda, &work->watch, &work->estimate, error);
+    status = keep(work, reached);
+    if (reached == LW_NOT_CONVERGED)
         lw_log_add(&work->log, "Not converged. %s The error bound of the model is %.1e.", lw_stop_words(work->estimate->stop),
                    work->estimate->point.error_bound);
     if (status == LW_OK && work->estimate->rcond < NEARLY_SINGULAR)

@@ -58,6 +58,11 @@ lw_status lw_work_sweep(lw_work *work, lw_error *error)
         status = lw_work_decompose(work, 1.0, true, error);
     }
     if (status >= 0) status = lw_sweep(work->decomposition, &options, &work->watch, &work->curve, error);
+    int open = 0;
+    for (int i = 0; status == LW_NOT_CONVERGED && i < work->curve->count; i++) open += !work->curve->row[i].usable;
+    if (open > 0)
+        lw_log_add(&work->log, "The sweep is not converged at the %d smallest of %d dampings: no criterion looks there (more --steps, or "
+                   "larger --dampings).", open, work->curve->count);
     if (status > 0 && work->qualified == LW_OK) work->qualified = status;
     work->run.curve = work->curve;
     work->run.interrupted = status == LW_INTERRUPTED;

@@ -1,5 +1,5 @@
-/** Allocation: overflow-checked sizes, huge pages for large blocks, and a gate through which tests make the k-th
- *  allocation fail (SuiteSparse, libcsv and jansson are given these functions too). */
+/** Allocation: overflow-checked sizes, huge pages for large blocks, and a gate through which tests make the
+ * k-th allocation fail (SuiteSparse, libcsv and jansson are given these functions too). */
 #ifndef LW_CORE_MEMORY_H
 #define LW_CORE_MEMORY_H
 
@@ -7,7 +7,8 @@
 #include <stddef.h>
 #include <stdint.h>
 
-/** count * size bytes, or NULL (overflow, no memory). count 0 gives a valid pointer. 64-byte aligned from 1 MiB on. */
+/** count * size bytes, or NULL (overflow, no memory). count 0 gives a valid pointer. 64-byte aligned from 1
+ * MiB on. */
 void *lw_alloc(size_t count, size_t size);
 /** The same, zero-filled. */
 void *lw_alloc_zero(size_t count, size_t size);
@@ -32,14 +33,16 @@ void lw_hook_free(void *block);
 typedef bool lw_memory_gate(void *state);
 void lw_memory_set_gate(lw_memory_gate *gate, void *state);
 
-/** Raises the malloc thresholds so that large work arrays are reused instead of mapped anew (design: halved the time of
- *  a 20k-parameter factorization). Once, at program start. */
+/** Raises the malloc thresholds so that large work arrays are reused instead of mapped anew (design: halved
+ * the time of a 20k-parameter factorization). Once, at program start. */
 void lw_memory_tune(void);
-/** Gives free memory between blocks back to the system: once, after reading, whose scratch would else stand beside the work. */
+/** Gives free memory between blocks back to the system: once, after reading, whose scratch would else stand
+ * beside the work. */
 void lw_memory_trim(void);
 /** Largest resident size so far, bytes (getrusage). */
 int64_t lw_memory_peak(void);
-/** Memory that the system says is available now, bytes; 0 unknown. Only used to refuse before the work starts. */
+/** Memory that the system says is available now, bytes; 0 unknown. Only used to refuse before the work
+ * starts. */
 int64_t lw_memory_available(void);
 /** a * b, or INT64_MAX where it overflows; both >= 0. */
 int64_t lw_bytes(int64_t a, int64_t b);

@@ -53,7 +53,8 @@ static void release_pages(const void *first, const void *last)
 {
     uintptr_t page = (uintptr_t)sysconf(_SC_PAGESIZE), from = ((uintptr_t)first + page - 1) / page * page,
               to = (uintptr_t)last / page * page;
-    if (to > from) (void)madvise((char *)(uintptr_t)first + (from - (uintptr_t)first), to - from, MADV_DONTNEED);
+    if (to > from)
+        (void)madvise((char *)(uintptr_t)first + (from - (uintptr_t)first), to - from, MADV_DONTNEED);
 }
 
 void lw_sparse_release(const lw_sparse *A, int64_t from, int64_t to)

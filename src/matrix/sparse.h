@@ -5,6 +5,7 @@
 #define LW_MATRIX_SPARSE_H
 
 #include "core/status.h"
+#include "core/watch.h"
 
 #include <stdint.h>
 
@@ -27,8 +28,8 @@ static inline int64_t lw_sparse_nonzeros(const lw_sparse *A)
 lw_status lw_sparse_new(int64_t rows, int64_t columns, int64_t nonzeros, int with_low, lw_sparse **out,
                         lw_error *error);
 void lw_sparse_free(lw_sparse *A);
-/** Tells the system that columns from .. to-1 of a mapped matrix are not needed soon: their pages leave the memory of the
- * process and are read again when they are. Nothing where A is not mapped. */
+/** Tells the system that columns from .. to-1 of a mapped matrix are not needed soon: their pages leave the
+ * memory of the process and are read again when they are. Nothing where A is not mapped. */
 void lw_sparse_release(const lw_sparse *A, int64_t from, int64_t to);
 /** The same behind a pass over the columns that has come to column j, now and then. */
 static inline void lw_sparse_release_behind(const lw_sparse *A, int64_t j)
@@ -48,6 +49,9 @@ lw_status lw_sparse_from_triplets(int64_t rows, int64_t columns, int64_t count, 
 /** C = A' A (upper triangle with diagonal, sorted), in double. row_weight (rows, may be NULL): A' diag(w) A.
  */
 lw_status lw_sparse_gram(const lw_sparse *A, const double *row_weight, lw_sparse **out, lw_error *error);
+/** LW_OK when A'A fits the memory budget while it is made, else LW_NO_MEMORY with `advice`. Counted entry by entry only
+ * where a bound from the row lengths does not do. */
+lw_status lw_sparse_gram_fits(const lw_sparse *A, const lw_watch *watch, const char *advice, lw_error *error);
 /** [A; B] with the same number of columns; C = alpha A over beta B. */
 lw_status lw_sparse_stack(double alpha, const lw_sparse *A, double beta, const lw_sparse *B, lw_sparse **out,
                           lw_error *error);

@@ -175,3 +175,36 @@ lw_status lw_sparse_gram(const lw_sparse *A, const double *row_weight, lw_sparse
     lw_sparse_free(C);
     return status;
 }
+
+#define BYTES_A_PLACE 24 /* the lower triangle and its transpose at once */
+
+/* Entries of the lower triangle of A'A at most: those of a full one, or sum_i l_i (l_i + 1) / 2 with row
+ * lengths l_i. */
+static double most_entries(const lw_sparse *A, const lw_sparse *T)
+{
+    double n = (double)A->columns, full = n * (n + 1) / 2, sum = n;
+    for (int64_t i = 0; i < T->columns; i++) {
+        double length = (double)(T->start[i + 1] - T->start[i]);
+        sum += length * (length + 1) / 2;
+    }
+    return sum < full ? sum : full;
+}
+
+lw_status lw_sparse_gram_fits(const lw_sparse *A, const lw_watch *watch, const char *advice, lw_error *error)
+{
+    lw_sparse *T = NULL;
+    lw_status status = lw_sparse_transpose(A, &T, error);
+    if (status) return status;
+    if (most_entries(A, T) * BYTES_A_PLACE > (double)lw_watch_memory(watch)) {
+        gram_state g = {A, T, NULL, LW_NEW_ARRAY(int64_t, A->rows), LW_NEW_ARRAY(int32_t, A->columns), NULL};
+        if (!g.next || !g.stamp)
+            status = lw_fail_memory(error, "the normal matrix", (size_t)A->rows * 8 + (size_t)A->columns * 4);
+        else
+            status = lw_watch_budget(watch, lw_bytes(count_gram(&g), BYTES_A_PLACE), "the normal matrix",
+                                     advice, error);
+        lw_free(g.next);
+        lw_free(g.stamp);
+    }
+    lw_sparse_free(T);
+    return status;
+}

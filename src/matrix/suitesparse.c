@@ -8,8 +8,9 @@
 #include <math.h>
 #include <string.h>
 
-/* Flops per nonzero of N (upper triangle) above which nested dissection is tried. Its own cost grows with N, what it can
- * save with the flops of minimum degree: measured even at 2e5 unknowns of a plane network, a gain beyond. */
+/* Flops per nonzero of N (upper triangle) above which nested dissection is tried. Its own cost grows with N,
+ * what it can save with the flops of minimum degree: measured even at 2e5 unknowns of a plane network, a gain
+ * beyond. */
 #define DISSECTION_FLOPS 25000.0
 /* Right-hand sides solved at a time. */
 #define SIDES 32

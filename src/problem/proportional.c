@@ -24,8 +24,8 @@ static uint64_t mix(uint64_t z)
     return z ^ (z >> 31);
 }
 
-/* What entry `index` adds to the hash of its vector; sums do not depend on order. The ratio is rounded to KEPT_BITS on its bits
- * as they stand: a carry out of the fraction moves the exponent up, as it should. */
+/* What entry `index` adds to the hash of its vector; sums do not depend on order. The ratio is rounded to
+ * KEPT_BITS on its bits as they stand: a carry out of the fraction moves the exponent up, as it should. */
 static uint64_t entry_hash(int64_t index, double ratio)
 {
     uint64_t bits;

@@ -82,8 +82,8 @@ static bool counts(const window *w, double a)
     return (a >= 0.0) & !(w->skip_zero & (a == 0.0)); /* not NaN */
 }
 
-/* Two places of a sorted sample that most likely enclose the middle of many values, so that few need to be copied.
- * Source: Floyd & Rivest, CACM 18(3):165-172, 1975. */
+/* Two places of a sorted sample that most likely enclose the middle of many values, so that few need to be
+ * copied. Source: Floyd & Rivest, CACM 18(3):165-172, 1975. */
 static void narrow(window *w)
 {
     enum { SAMPLE = 1024, MARGIN = 96, TRIES = 4 * SAMPLE };
@@ -123,7 +123,8 @@ static lw_status find_median(window *w, int64_t n, double *median, lw_error *err
         less = 0;
         most = n;
     }
-    double *v = LW_NEW_ARRAY(double, most - less + 1); /* one place more: written before it is known to count */
+    double *v =
+        LW_NEW_ARRAY(double, most - less + 1); /* one place more: written before it is known to count */
     if (v == NULL) return lw_fail_memory(error, "a median", (size_t)(most - less) * sizeof(double));
     for (int64_t i = 0; i < w->count; i++) {
         double a = fabs(w->values[i]);

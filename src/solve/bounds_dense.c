@@ -165,9 +165,9 @@ static int64_t worst_sign(const finish *f, double allowed)
     return worst;
 }
 
-/* R'R s = -K_F'(K t - b): what rounding left of the gradient, with K itself instead of its factor, corrects the
- * free parameters. Source: Bjorck, Numerical Methods for Least Squares Problems, SIAM 1996, 6.6.5 (corrected
- * seminormal equations). */
+/* R'R s = -K_F'(K t - b): what rounding left of the gradient, with K itself instead of its factor, corrects
+ * the free parameters. Source: Bjorck, Numerical Methods for Least Squares Problems, SIAM 1996, 6.6.5
+ * (corrected seminormal equations). */
 static lw_status correct(finish *f, lw_error *error)
 {
     int64_t free = 0, k = f->k;
@@ -178,7 +178,8 @@ static lw_status correct(finish *f, lw_error *error)
     if (free == 0) return LW_OK;
     double *part = LW_NEW_ARRAY(double, k *free);
     if (part == NULL) return lw_fail_memory(error, "the bounded problem", (size_t)lw_bytes(k * free, 8));
-    for (int64_t p = 0; p < free; p++) memcpy(part + p * k, f->H + f->place[p] * k, (size_t)k * sizeof(double));
+    for (int64_t p = 0; p < free; p++)
+        memcpy(part + p * k, f->H + f->place[p] * k, (size_t)k * sizeof(double));
     lw_status status = lw_dense_qr_make(k, free, part, -1.0, &qr, error);
     for (int round = 0; status == LW_OK && qr.rank == free && round < CORRECTIONS; round++) {
         lw_box_refresh(box);

@@ -236,7 +236,8 @@ lw_status lw_cholesky_plan(lw_system *system, double lambda, const lw_solve_opti
     lw_status status =
         lw_direct_new(system, &cholesky_methods, &cholesky_factor, state, options, watch, &self, error);
     if (status < 0) return status;
-    status = make_normal(self, lambda, &N, &own, error);
+    status = lw_sparse_gram_fits(system->matrix, watch, "take --engine lsqr, or allow more", error);
+    if (status == LW_OK) status = make_normal(self, lambda, &N, &own, error);
     if (status == LW_OK) status = analyse(self, N, watch, error);
     if (own) lw_sparse_free(N);
     if (status != LW_OK) {

@@ -11,7 +11,7 @@
 #define MOST_EXACT 2000 /* columns up to which the trace is exact */
 #define BATCH 64
 #define NORM_STEPS 5
-#define LARGE 2000  /* columns from which a solve is dear */
+#define LARGE 2000   /* columns from which a solve is dear */
 #define SETTLED 0.25 /* relative change of the norm that no longer matters to a condition number */
 
 /* The right-hand side over the rows of M: f, and h of the conditions that stand in the factor. */
@@ -173,9 +173,10 @@ lw_status lw_direct_trace(lw_direct *self, double lambda, double *trace, double 
     return probed_trace(self, lambda, *trace, trace, spread, error);
 }
 
-/* Largest eigenvalue of M'M (inverse 0) or of its inverse (1), by a few steps of the power method from a vector without
- * symmetry; they end when the norm has settled. A step with the inverse costs a solve and separates far better, the smallest
- * eigenvalues being few and far below the rest: a large system takes two. */
+/* Largest eigenvalue of M'M (inverse 0) or of its inverse (1), by a few steps of the power method from a
+ * vector without symmetry; they end when the norm has settled. A step with the inverse costs a solve and
+ * separates far better, the smallest eigenvalues being few and far below the rest: a large system takes two.
+ */
 static lw_status iterate_norm(lw_direct *self, int inverse, double *norm, lw_error *error)
 {
     int64_t n = self->base.system->columns, rows = lw_direct_stacked(self, self->base_lambda);

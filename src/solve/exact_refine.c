@@ -7,11 +7,11 @@
 
 #include <math.h>
 
-#define ENOUGH 1e-25 /* relative correction below which nothing printed can change */
+#define ENOUGH 1e-25   /* relative correction below which nothing printed can change */
 #define FORESEEN 1e-27 /* the same for the next correction, foreseen from the last two */
-#define GATE 0.1     /* contraction above which the factor is not trusted */
-#define SURE 1e-15   /* last relative correction that still leaves a double right */
-#define SHRINKS 0.5  /* a correction must be smaller than this times the one before */
+#define GATE 0.1       /* contraction above which the factor is not trusted */
+#define SURE 1e-15     /* last relative correction that still leaves a double right */
+#define SHRINKS 0.5    /* a correction must be smaller than this times the one before */
 
 typedef struct work {
     double *f, *g, *h; /* right-hand sides */

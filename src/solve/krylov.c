@@ -35,13 +35,15 @@ static int64_t rank(lw_decomposition *base)
 
 #define METHODS(name_, extend_)                                                                              \
     {                                                                                                        \
-        .engine = name_, .evaluate = lw_krylov_evaluate, .estimate = lw_krylov_estimate,                     \
-        .extend = extend_, .solve_many = lw_krylov_solve_many, .rank = rank, .rcond = rcond,        \
-        .free_self = free_krylov                                                                             \
+        .engine = name_, .evaluate = lw_krylov_evaluate, .estimate = lw_krylov_estimate, .extend = extend_,  \
+        .solve_many = lw_krylov_solve_many, .rank = rank, .rcond = rcond, .free_self = free_krylov           \
     }
-static const lw_decomposition_methods methods[] = {METHODS("lsqr", lw_krylov_extend), METHODS("cgls", lw_krylov_extend),
-                                                   METHODS("lsmr", lw_krylov_extend), METHODS("lsqr", NULL),
-                                                   METHODS("cgls", NULL), METHODS("lsmr", NULL)};
+static const lw_decomposition_methods methods[] = {METHODS("lsqr", lw_krylov_extend),
+                                                   METHODS("cgls", lw_krylov_extend),
+                                                   METHODS("lsmr", lw_krylov_extend),
+                                                   METHODS("lsqr", NULL),
+                                                   METHODS("cgls", NULL),
+                                                   METHODS("lsmr", NULL)};
 #define ENGINES 3
 
 bool lw_is_krylov(const lw_decomposition *decomposition)
@@ -67,10 +69,11 @@ static lw_status make_form(lw_krylov *self, const lw_solve_options *options, con
     self->b = self->base.system->b;
     self->base.methods += ENGINES;
     if (status == LW_OK)
-        status = lw_log_add(self->watch.log,
-                            "The penalty is not brought to standard form (%s): the damped equations are solved "
-                            "stacked, one damping at a time, which takes more steps.",
-                            error != NULL && error->text[0] != '\0' ? error->text : "L'L has no factor");
+        status =
+            lw_log_add(self->watch.log,
+                       "The penalty is not brought to standard form (%s): the damped equations are solved "
+                       "stacked, one damping at a time, which takes more steps.",
+                       error != NULL && error->text[0] != '\0' ? error->text : "L'L has no factor");
     return status;
 }
 
@@ -85,8 +88,7 @@ lw_status lw_krylov_decompose(lw_system *system, double lambda, const lw_solve_o
     lw_krylov *self = LW_NEW(lw_krylov);
     if (self == NULL) return lw_fail_memory(error, "the decomposition", sizeof *self);
     size_t which = 0;
-    while (which + 1 < ENGINES && strcmp(methods[which].engine, engine) != 0)
-        which++;
+    while (which + 1 < ENGINES && strcmp(methods[which].engine, engine) != 0) which++;
     self->base.methods = &methods[which];
     self->base.system = system;
     self->iterate = iterate;

@@ -4,11 +4,12 @@
  *  Many dampings: one bidiagonalization for all of them, whatever engine was named,
  *      A V_k = U_{k+1} B_k,  x(lambda) = V_k y(lambda),  y from the small bidiagonal problem (projected.h)
  *  with V_k kept in blocks while it fits half the memory budget; beyond it the curve is still read from B_k,
- * and models are made by the short recurrence, one damping at a time. Where L'L has no factor (memory, too many
- * undamped directions) there is no bidiagonalization and no `extend`: each damping is solved stacked. The trace of the influence matrix:
- * exact, from singular values, for small problems; else by random +-1 probes z, each with its own
- * bidiagonalization in lockstep (one pass over the matrix for all), trace H = E[z'H z], z'H z by Gauss
- * quadrature. Source of the probes: Hutchinson, Commun. Statist. Simula. 19(2):433-450, 1990. */
+ * and models are made by the short recurrence, one damping at a time. Where L'L has no factor (memory, too
+ * many undamped directions) there is no bidiagonalization and no `extend`: each damping is solved stacked.
+ * The trace of the influence matrix: exact, from singular values, for small problems; else by random +-1
+ * probes z, each with its own bidiagonalization in lockstep (one pass over the matrix for all), trace H =
+ * E[z'H z], z'H z by Gauss quadrature. Source of the probes: Hutchinson, Commun. Statist. Simula.
+ * 19(2):433-450, 1990. */
 #ifndef LW_SOLVE_KRYLOV_H
 #define LW_SOLVE_KRYLOV_H
 
@@ -29,7 +30,7 @@ typedef struct lw_basis {
 
 /** Without a standard form: the models of the latest damping, from which the next starts. */
 typedef struct lw_stacked {
-    int sides;      /**< columns of x; 0 none yet */
+    int sides; /**< columns of x; 0 none yet */
     double lambda;
     double inverse; /**< lower bound of ||(A'A + lambda^2 L'L)^-1|| */
     double *x;      /**< columns x sides */
@@ -46,9 +47,8 @@ typedef struct lw_krylov {
     double tolerance;
     int64_t most; /**< steps */
     int damped, probes;
-    lw_watch watch; /**< for calls that bring none: memory, seed and log only */
-    lw_standard_form
-        *form;          /**< NULL: L'L has no factor, each damping is solved stacked (krylov_stacked.c) */
+    lw_watch watch;         /**< for calls that bring none: memory, seed and log only */
+    lw_standard_form *form; /**< NULL: L'L has no factor, each damping is solved stacked (krylov_stacked.c) */
     lw_stacked stacked;
     lw_operator *op;    /**< borrowed from the form */
     lw_operator *plain; /**< A itself, made when it is needed beside the form */
@@ -62,8 +62,8 @@ typedef struct lw_krylov {
     int64_t made; /**< steps of the bidiagonalization */
     lw_bidiagonal B[LW_LOCKSTEP];
     lw_basis basis;
-    bool keeps;       /**< V is complete */
-    lw_split *split;  /**< with weighted priors and without V */
+    bool keeps;      /**< V is complete */
+    lw_split *split; /**< with weighted priors and without V */
     int splits;
     double *singular; /**< exact trace: singular values of Abar; NULL none */
     int64_t singular_count;

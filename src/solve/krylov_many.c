@@ -39,7 +39,8 @@ static void make_gradient(lw_many *c, double *gamma)
 double lw_many_bound(const lw_many *c, int i)
 {
     double inverse = fmax(c->inverse[i], c->least), norm = lw_norm(c->n, c->x + i * c->n, c->op->team);
-    if ((c->diagonal != NULL || c->form != NULL) && c->lambda > 0.0) inverse = fmin(inverse, 1.0 / (c->lambda * c->lambda));
+    if ((c->diagonal != NULL || c->form != NULL) && c->lambda > 0.0)
+        inverse = fmin(inverse, 1.0 / (c->lambda * c->lambda));
     return norm > 0.0 ? sqrt(c->gamma[i]) * inverse / norm : (double)INFINITY;
 }
 
@@ -160,7 +161,8 @@ lw_status lw_many_new(lw_many *c, lw_krylov *self, double lambda, int sides, int
     return LW_OK;
 }
 
-/* f = [f1; f2], rows + penalty rows, as right-hand side i: in the standard form (I - Q Q') f1 and L^#' L' f2. */
+/* f = [f1; f2], rows + penalty rows, as right-hand side i: in the standard form (I - Q Q') f1 and L^#' L' f2.
+ */
 static lw_status take_side(lw_many *c, int i, const double *f, lw_error *error)
 {
     double *r1 = c->r1 + i * c->m, *r2 = c->r2 + i * c->p;
@@ -177,7 +179,8 @@ static lw_status take_side(lw_many *c, int i, const double *f, lw_error *error)
         return LW_OK;
     }
     double *z = LW_NEW_ARRAY(double, c->system->columns);
-    if (z == NULL) return lw_fail_memory(error, "right-hand sides", (size_t)c->system->columns * sizeof(double));
+    if (z == NULL)
+        return lw_fail_memory(error, "right-hand sides", (size_t)c->system->columns * sizeof(double));
     lw_system_penalize_transposed(c->system, f + c->m, z);
     lw_status status = lw_standard_form_root_transposed(c->form, 1, z, r2, error);
     lw_free(z);
@@ -219,12 +222,13 @@ static lw_status solve_some(lw_many *c, lw_krylov *self, const double *f, double
 {
     int64_t columns = c->system->columns, tall = c->m + (c->lambda > 0.0 ? c->system->penalty_rows : 0);
     lw_status status = LW_OK;
-    double *zero = f == NULL ? LW_NEW_ZEROS(double, tall *c->k) : NULL;
-    double *spare = z == NULL ? LW_NEW_ARRAY(double, columns *c->k) : NULL;
+    double *zero = f == NULL ? LW_NEW_ZEROS(double, tall * c->k) : NULL;
+    double *spare = z == NULL ? LW_NEW_ARRAY(double, columns * c->k) : NULL;
     if (f == NULL) f = zero;
     if (z == NULL) z = spare;
     if (f == NULL || z == NULL)
-        status = lw_fail_memory(error, "right-hand sides", (size_t)((tall + columns) * c->k) * sizeof(double));
+        status =
+            lw_fail_memory(error, "right-hand sides", (size_t)((tall + columns) * c->k) * sizeof(double));
     for (int i = 0; i < c->k && status == LW_OK; i++) status = take_side(c, i, f + i * tall, error);
     if (status == LW_OK) {
         lw_many_iterate(c, self->most, 0, NULL, &self->watch);

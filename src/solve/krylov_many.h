@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/** Conjugate gradients on the stacked system, several right-hand sides in lockstep, one product with A and one
- *  with A' a step for all of them:
+/** Conjugate gradients on the stacked system, several right-hand sides in lockstep, one product with A and
+ * one with A' a step for all of them:
  *
  *      r = [f1; f2] - [A; lambda L] x       s = A'r1 + lambda L'r2 - g       (s = 0 at the solution)
  *      a = ||s||^2 / (||A p||^2 + lambda^2 ||L p||^2),  x <- x + a p,  p <- s + beta p
@@ -31,9 +31,10 @@ typedef struct lw_many {
     bool done[LW_MANY_SIDES];
 } lw_many;
 
-/** Room for `sides` right-hand sides at lambda; cleared by the caller also after a failure. gradient: g will be
- *  given. */
-lw_status lw_many_new(lw_many *many, lw_krylov *self, double lambda, int sides, int gradient, lw_error *error);
+/** Room for `sides` right-hand sides at lambda; cleared by the caller also after a failure. gradient: g will
+ * be given. */
+lw_status lw_many_new(lw_many *many, lw_krylov *self, double lambda, int sides, int gradient,
+                      lw_error *error);
 void lw_many_clear(lw_many *many);
 /** Iterates from r1 = f1, r2 = f2 and x = 0, or, when started, from x as it stands with r1 and r2 the
  *  residuals there. Returns the steps; `done` says which sides have converged. */

@@ -115,7 +115,10 @@ static lw_status split_points(lw_krylov *self, int count, const double *lambda, 
 
 static void fill_point(const lw_krylov *self, double lambda, const lw_projected *at, lw_point *point)
 {
-    *point = (lw_point){.lambda = lambda, .misfit = at->misfit, .size = hypot(at->size, self->base.system->penalty_constant), .size_slope = at->slope};
+    *point = (lw_point){.lambda = lambda,
+                        .misfit = at->misfit,
+                        .size = hypot(at->size, self->base.system->penalty_constant),
+                        .size_slope = at->slope};
     point->chi_square = at->misfit * at->misfit;
     point->effective_parameters = point->effective_spread = (double)NAN;
     /* the recurrence goes on falling below what rounding leaves of the gradient */
@@ -143,7 +146,8 @@ lw_status lw_krylov_evaluate(lw_decomposition *base, int count, const double *la
     lw_krylov *self = (lw_krylov *)base;
     lw_status status = LW_OK;
     if (self->form == NULL)
-        return lw_krylov_evaluate_stacked(self, count, lambda, want_trace, point, models, watch_of(self, watch), error);
+        return lw_krylov_evaluate_stacked(self, count, lambda, want_trace, point, models,
+                                          watch_of(self, watch), error);
     if (!self->started || self->B[0].k < 1) status = lw_krylov_extend(base, 1, NULL, watch, error);
     if (status != LW_OK) return status;
     if (self->B[0].k < 1) {
@@ -283,7 +287,8 @@ lw_status lw_krylov_estimate(lw_decomposition *base, double lambda, const lw_wat
     if (w == NULL || z == NULL)
         status = lw_fail_memory(error, "the model", (width + columns) * sizeof(double));
     if (status == LW_OK && self->form == NULL) {
-        status = lw_krylov_stacked(self, lambda, self->probes > 0 ? self->probes : 0, watch, z, &result, &trace, error);
+        status = lw_krylov_stacked(self, lambda, self->probes > 0 ? self->probes : 0, watch, z, &result,
+                                   &trace, error);
     } else if (status == LW_OK) {
         status = solve(self, lambda, watch, w, &result, error);
         if (status >= 0) after = lw_standard_form_back(self->form, 1, w, z, error);

@@ -42,7 +42,8 @@ static lw_status keep(lw_krylov *self, const lw_many *c, lw_error *error)
         lw_free(s->x);
         s->sides = 0;
         s->x = lw_alloc((size_t)c->n * (size_t)c->k, sizeof(double));
-        if (s->x == NULL) return lw_fail_memory(error, "the models", (size_t)c->n * (size_t)c->k * sizeof(double));
+        if (s->x == NULL)
+            return lw_fail_memory(error, "the models", (size_t)c->n * (size_t)c->k * sizeof(double));
         s->sides = c->k;
     }
     lw_copy(c->n * c->k, c->x, s->x);
@@ -79,9 +80,11 @@ static lw_status read_slope(lw_krylov *self, lw_point *point, const double *z, l
 {
     const lw_system *system = self->base.system;
     size_t n = (size_t)system->columns, p = (size_t)system->penalty_rows;
-    double *v = lw_alloc(n, sizeof(double)), *l = lw_alloc(p, sizeof(double)), *y = lw_alloc(n, sizeof(double));
+    double *v = lw_alloc(n, sizeof(double)), *l = lw_alloc(p, sizeof(double)),
+           *y = lw_alloc(n, sizeof(double));
     lw_status status = LW_OK;
-    if (v == NULL || l == NULL || y == NULL) status = lw_fail_memory(error, "the curve", (2 * n + p) * sizeof(double));
+    if (v == NULL || l == NULL || y == NULL)
+        status = lw_fail_memory(error, "the curve", (2 * n + p) * sizeof(double));
     if (status == LW_OK) {
         lw_system_penalize(system, z, l);
         lw_system_penalize_transposed(system, l, v);
@@ -102,7 +105,8 @@ lw_status lw_krylov_stacked(lw_krylov *self, double lambda, int probes, const lw
     *out = (lw_iterate_result){.cond_A = (double)NAN};
     lw_status status = begin(&c, self, lambda, 1 + probes, error);
     if (status == LW_OK) {
-        out->steps = lw_many_iterate(&c, self->most, self->stacked.sides == c.k, "iterating on the stacked equations", watch);
+        out->steps = lw_many_iterate(&c, self->most, self->stacked.sides == c.k,
+                                     "iterating on the stacked equations", watch);
         lw_copy(c.n, c.x, z);
         out->gradient = sqrt(c.gamma[0]);
         out->error_bound = c.gamma[0] > 0.0 ? lw_many_bound(&c, 0) : 0.0;
@@ -132,7 +136,8 @@ lw_status lw_krylov_evaluate_stacked(lw_krylov *self, int count, const double *l
         lw_estimate *estimate = NULL;
         lw_point trace = {.effective_parameters = (double)NAN, .effective_spread = (double)NAN};
         status = lw_krylov_stacked(self, lambda[i], probes, watch, z, &result, &trace, error);
-        if (status >= 0 && lw_estimate_from_model(system, lambda[i], z, NULL, 0, &estimate, error) < 0) status = error != NULL && error->status < 0 ? error->status : LW_NO_MEMORY;
+        if (status >= 0 && lw_estimate_from_model(system, lambda[i], z, NULL, 0, &estimate, error) < 0)
+            status = error != NULL && error->status < 0 ? error->status : LW_NO_MEMORY;
         if (status < 0) break;
         point[i] = estimate->point;
         point[i].error_bound = result.error_bound;

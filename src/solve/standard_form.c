@@ -153,8 +153,9 @@ static lw_status project_null(lw_standard_form *form, const lw_watch *watch, lw_
     double *AN = NULL;
     if (d == 0) return LW_OK;
     if (lw_watch_budget(watch, lw_bytes(lw_bytes(m, d), 16), "undamped directions", "", NULL) != LW_OK)
-        return lw_fail(error, LW_QUALIFIED, "the %lld undamped directions of %lld equations do not fit --memory",
-                       (long long)d, (long long)m);
+        return lw_fail(error, LW_QUALIFIED,
+                       "the %lld undamped directions of %lld equations do not fit --memory", (long long)d,
+                       (long long)m);
     int64_t tall = m > d ? m : d;
     lw_status status = multiply_null(form, &AN, error);
     if (status == LW_OK) {
@@ -238,7 +239,8 @@ lw_status lw_standard_form_root_transposed(lw_standard_form *form, int64_t k, co
 {
     for (int64_t at = 0; at < k; at += LW_STANDARD_BLOCK) {
         int some = (int)(k - at < LW_STANDARD_BLOCK ? k - at : LW_STANDARD_BLOCK);
-        lw_standard_root_transposed(&form->root, some, z + at * form->system->columns, w + at * form->root.width);
+        lw_standard_root_transposed(&form->root, some, z + at * form->system->columns,
+                                    w + at * form->root.width);
     }
     return root_status(form, error);
 }

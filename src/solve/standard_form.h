@@ -25,8 +25,8 @@ typedef struct lw_standard_form lw_standard_form;
 
 /** damped 0: no penalty. *out NULL with LW_QUALIFIED when the factor of L'L would be too large for the
  *  budget, when the penalty leaves too many directions undamped, or when L'L is too ill-conditioned for a
- *  factor, with the reason in error: the caller falls back to stacking and says so. LW_UNSOLVABLE, naming parameters, when the data do
- *  not determine what the penalty leaves undamped. */
+ *  factor, with the reason in error: the caller falls back to stacking and says so. LW_UNSOLVABLE, naming
+ * parameters, when the data do not determine what the penalty leaves undamped. */
 lw_status lw_standard_form_new(lw_system *system, int damped, const lw_product_options *product,
                                const lw_watch *watch, lw_standard_form **out, lw_error *error);
 void lw_standard_form_free(lw_standard_form *form);
@@ -57,14 +57,16 @@ lw_status lw_standard_form_root_transposed(lw_standard_form *form, int64_t k, co
                                            lw_error *error);
 /** Pieces of the prior covariance of z that the penalty means, with lambda = 1:
  *
- *      G = L^# - X W',  X = N T^-1,  W = L^#' A'Q;   G G' = S - X Y' - Y X' + X W'W X',  S = L^# L^#', Y = L^# W
+ *      G = L^# - X W',  X = N T^-1,  W = L^#' A'Q;   G G' = S - X Y' - Y X' + X W'W X',  S = L^# L^#', Y =
+ * L^# W
  *
  *  change (columns): diag(G G' - S); null (columns): diag(X X'), the part that the data alone determine.
- *  Source: standard_form.h with c = T^-1 Q'(b - A L^# w) random. LW_QUALIFIED, reason in error: does not fit. */
+ *  Source: standard_form.h with c = T^-1 Q'(b - A L^# w) random. LW_QUALIFIED, reason in error: does not fit.
+ */
 lw_status lw_standard_form_prior(lw_standard_form *form, const lw_watch *watch, double *change, double *null,
                                  lw_error *error);
-/** What S needs: diagonal (columns) where L is diagonal and *factor NULL; else the Cholesky factor of L_f'L_f (borrowed)
- *  whose place k is column (*column_of)[k], in model units. */
+/** What S needs: diagonal (columns) where L is diagonal and *factor NULL; else the Cholesky factor of L_f'L_f
+ * (borrowed) whose place k is column (*column_of)[k], in model units. */
 void lw_standard_form_factor(lw_standard_form *form, const double **inverse, lw_cholesky **factor,
                              const int64_t **column_of);
 

@@ -211,7 +211,8 @@ static lw_status search(haul *got, const lw_system *system, const lw_sparse *L, 
         int used = q;
         start_again(got);
         if (q > LARGEST_BLOCK)
-            return lw_fail(error, LW_QUALIFIED, "the penalty leaves more than %d directions of connected parameters undamped",
+            return lw_fail(error, LW_QUALIFIED,
+                           "the penalty leaves more than %d directions of connected parameters undamped",
                            LARGEST_BLOCK / 2);
         int64_t bytes = lw_bytes(L->rows + 2 * L->columns, 8 * (int64_t)q);
         if (lw_watch_budget(watch, bytes, "null vectors of the penalty", "", NULL) != LW_OK)
@@ -258,7 +259,9 @@ void lw_standard_warn(lw_log *log, int64_t directions, double rcond)
 {
     if (!(rcond < 1e-5)) return;
     lw_log_add(log,
-               "The data hardly determine a direction that the penalty leaves alone (%lld such directions, condition %.1e): "
-               "parameters run away along it at any damping. --also-smallest 0.01, --prefer flattest, or a prior_sigma with damp_weight 1 hold it.",
+               "The data hardly determine a direction that the penalty leaves alone (%lld such directions, "
+               "condition %.1e): "
+               "parameters run away along it at any damping. --also-smallest 0.01, --prefer flattest, or a "
+               "prior_sigma with damp_weight 1 hold it.",
                (long long)directions, 1.0 / rcond);
 }

@@ -53,7 +53,8 @@ lw_status lw_standard_form_prior(lw_standard_form *form, const lw_watch *watch, 
     if (d == 0) return LW_OK;
     int64_t bytes = lw_bytes(3 * n + width, lw_bytes(d, 8));
     if (lw_watch_budget(watch, bytes, "the prior covariance", "", NULL) != LW_OK)
-        return lw_fail(error, LW_QUALIFIED, "the prior covariance of %lld undamped directions does not fit --memory",
+        return lw_fail(error, LW_QUALIFIED,
+                       "the prior covariance of %lld undamped directions does not fit --memory",
                        (long long)d);
     double *X = LW_NEW_ZEROS(double, n *d), *Y = LW_NEW_ARRAY(double, n *d), *Z = LW_NEW_ARRAY(double, n *d);
     double *W = LW_NEW_ARRAY(double, width *d), *M = LW_NEW_ARRAY(double, d *d);

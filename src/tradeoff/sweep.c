@@ -273,7 +273,8 @@ static void set_up(sweep *s, lw_decomposition *decomposition, const lw_sweep_opt
     look->error = error;
     look->sigma_stated = options->sigma_stated;
     look->direct = decomposition->methods->extend == NULL;
-    unsigned abilities = engine != NULL ? engine->abilities : 0; /* an iterative engine that has no basis is not cheap */
+    unsigned abilities =
+        engine != NULL ? engine->abilities : 0; /* an iterative engine that has no basis is not cheap */
     look->cheap = !look->direct || (abilities & (LW_SWEEPS | LW_DIRECT)) == (LW_SWEEPS | LW_DIRECT);
     s->iterative = (abilities & LW_DIRECT) == 0;
     look->traced = lw_sweep_wants_trace(options);

@@ -1,8 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/** What the programs of the bench share: matrix files, clocks, and lines of results "name value" on standard output.
+/** What the programs of the bench share: matrix files, clocks, and lines of results "name value" on standard
+ * output.
  *
- *  A matrix file (written by generate.py): int64 m, n, nonzeros, 0; int64 start[n + 1]; int32 index[nonzeros], padded to 8
- *  bytes; double value[nonzeros], b[m], sigma[m], coordinate[3 n]. Compressed columns, row indices increasing. */
+ *  A matrix file (written by generate.py): int64 m, n, nonzeros, 0; int64 start[n + 1]; int32
+ * index[nonzeros], padded to 8 bytes; double value[nonzeros], b[m], sigma[m], coordinate[3 n]. Compressed
+ * columns, row indices increasing. */
 #ifndef LW_BENCH_BENCH_H
 #define LW_BENCH_BENCH_H
 
@@ -20,12 +22,13 @@ bench_clock bench_now(void);
 /** Prints "NAME_wall" and "NAME_cpu" seconds since `from`. */
 void bench_tell(const char *name, bench_clock from);
 void bench_tell_number(const char *name, double value);
-/** Prints "peak" of the process and "peak_before" the work, both in bytes. */
-void bench_tell_peak(int64_t before);
+/** Prints "peak", the largest resident size of this program so far, in bytes. */
+void bench_tell_peak(void);
 /** Ends the program with a message unless status >= 0. */
 void bench_check(lw_status status, const lw_error *error);
 void *bench_sure(void *block);
-/** The problem of a matrix file, as read from CSV without low parts; coordinates NULL when the file has NaN there. */
+/** The problem of a matrix file, as read from CSV without low parts; coordinates NULL when the file has NaN
+ * there. */
 lw_problem *bench_problem(const char *path);
 /** Uniform random numbers in -1 .. 1, always the same. */
 double *bench_random(int64_t count);

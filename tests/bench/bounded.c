@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* A bounded solve: bounded MATRIX DAMPING THREADS. Bounds 0.47 .. 0.53 on every cell; prints time, products, optimality. */
+/* A bounded solve: bounded MATRIX DAMPING THREADS. Bounds 0.47 .. 0.53 on every cell; prints time, products,
+ * optimality. */
 #include "bench.h"
 
 #include "core/memory.h"
@@ -35,7 +36,7 @@ int main(int argc, char **argv)
     bench_tell_number("products", (double)bounded->steps);
     bench_tell_number("optimality", bounded->optimality);
     bench_tell_number("at_bound", (double)(bounded->columns - bounded->free));
-    bench_tell_peak(0);
+    bench_tell_peak();
     lw_bounded_free(bounded);
     lw_system_free(system);
     lw_problem_free(problem);

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Dense problems: dense ROWS COLUMNS own|lapack|gsl|own-sweep|gsl-sweep
  *   own, lapack, gsl   one least-squares solution: the dense engine refined; dgels; gsl_multifit_linear
- *   *-sweep            50 dampings: the dense engine's decomposition; gsl_multifit_linear_svd and _solve for each */
+ *   *-sweep            50 dampings: the dense engine's decomposition; gsl_multifit_linear_svd and _solve for
+ * each */
 #include "bench.h"
 
 #include "core/memory.h"
@@ -32,7 +33,9 @@ static void run_own(const lw_problem *problem, int sweep)
     bench_check(lw_decompose(system, sweep ? 1 : 0, &options, NULL, &choice, &decomposition, &error), &error);
     if (sweep) {
         double *models = bench_sure(LW_NEW_ARRAY(double, DAMPINGS * problem->n));
-        bench_check(decomposition->methods->evaluate(decomposition, DAMPINGS, grid, 1, point, models, NULL, &error), &error);
+        bench_check(
+            decomposition->methods->evaluate(decomposition, DAMPINGS, grid, 1, point, models, NULL, &error),
+            &error);
         lw_free(models);
     } else {
         lw_estimate *estimate;
@@ -47,7 +50,8 @@ static void run_own(const lw_problem *problem, int sweep)
 static void run_lapack(const lw_problem *problem)
 {
     lw_error error = {0};
-    double *A = bench_sure(LW_NEW_ARRAY(double, problem->m *problem->n)), *b = bench_sure(LW_NEW_ARRAY(double, problem->m));
+    double *A = bench_sure(LW_NEW_ARRAY(double, problem->m * problem->n)),
+           *b = bench_sure(LW_NEW_ARRAY(double, problem->m));
     memcpy(b, problem->value, (size_t)problem->m * sizeof *b);
     bench_clock from = bench_now();
     lw_sparse_to_dense(problem->design, A);
@@ -106,9 +110,12 @@ int main(int argc, char **argv)
     bench_start();
     lw_problem *problem = make_problem(atol(argv[1]), atol(argv[2]));
     int sweep = strstr(argv[3], "-sweep") != NULL;
-    if (!strncmp(argv[3], "own", 3)) run_own(problem, sweep);
-    else if (!strncmp(argv[3], "gsl", 3)) run_gsl(problem, sweep);
-    else run_lapack(problem);
+    if (!strncmp(argv[3], "own", 3))
+        run_own(problem, sweep);
+    else if (!strncmp(argv[3], "gsl", 3))
+        run_gsl(problem, sweep);
+    else
+        run_lapack(problem);
     lw_problem_free(problem);
     return 0;
 }

@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Networks: network MATRIX own|certain|inverse|cholmod|spqr|mirror
- *   own      solve, refined on the exact augmented system           certain  that with variances and redundancies
- *   inverse  numeric factorization beside the selected inverse      mirror   cholmod with the program's own orderings
- *   cholmod  A'A, analyse, factorize, solve: one thread, tuned allocation and ordering      spqr  its least squares */
+ *   own      solve, refined on the exact augmented system           certain  that with variances and
+ * redundancies inverse  numeric factorization beside the selected inverse      mirror   cholmod with the
+ * program's own orderings cholmod  A'A, analyse, factorize, solve: one thread, tuned allocation and ordering
+ * spqr  its least squares */
 #include "bench.h"
 
 #include "certainty/cofactor.h"
@@ -28,7 +29,6 @@ static void run_own(const lw_problem *problem, int certain)
     lw_engine_choice choice;
     lw_watch watch = {.memory = INT64_C(12) << 30};
     lw_solve_options options = {.engine = "cholesky"};
-    int64_t before = lw_memory_peak();
     bench_clock from = bench_now();
     bench_check(lw_system_new(problem, &(lw_system_options){0}, &watch, &system, &error), &error);
     bench_check(lw_decompose(system, 0, &options, &watch, &choice, &decomposition, &error), &error);
@@ -56,7 +56,7 @@ static void run_own(const lw_problem *problem, int certain)
         lw_cofactor_free(cofactor);
         lw_equations_clear(&equations);
     }
-    bench_tell_peak(before);
+    bench_tell_peak();
     lw_estimate_free(estimate);
     lw_decomposition_free(decomposition);
     lw_system_free(system);
@@ -92,8 +92,8 @@ static void run_inverse(const lw_problem *problem)
 static cholmod_sparse *copy_matrix(const lw_sparse *A, cholmod_common *common)
 {
     int64_t nonzeros = lw_sparse_nonzeros(A);
-    cholmod_sparse *M = cholmod_l_allocate_sparse((size_t)A->rows, (size_t)A->columns, (size_t)nonzeros, 1, 1, 0,
-                                                  CHOLMOD_REAL, common);
+    cholmod_sparse *M = cholmod_l_allocate_sparse((size_t)A->rows, (size_t)A->columns, (size_t)nonzeros, 1, 1,
+                                                  0, CHOLMOD_REAL, common);
     SuiteSparse_long *index = bench_sure(M->i);
     memcpy(M->p, A->start, (size_t)(A->columns + 1) * 8);
     memcpy(M->x, A->value, (size_t)nonzeros * 8);
@@ -119,7 +119,8 @@ static void start(cholmod_common *common)
     common->nmethods = 1;
 }
 
-/* A is the matrix as it stands, its rows divided by sigma before the clock starts. mirror: both orderings are looked at. */
+/* A is the matrix as it stands, its rows divided by sigma before the clock starts. mirror: both orderings are
+ * looked at. */
 static void run_cholmod(const lw_problem *problem, int mirror)
 {
     cholmod_common common;
@@ -127,7 +128,6 @@ static void run_cholmod(const lw_problem *problem, int mirror)
     start(&common);
     cholmod_sparse *A = copy_matrix(problem->design, &common);
     cholmod_dense *b = copy_vector(problem->m, problem->value, &common);
-    int64_t before = lw_memory_peak();
     common.method[0].ordering = problem->n > 500000 && !mirror ? CHOLMOD_METIS : CHOLMOD_AMD;
     bench_clock from = bench_now();
     cholmod_sparse *At = cholmod_l_transpose(A, 1, &common);
@@ -147,7 +147,7 @@ static void run_cholmod(const lw_problem *problem, int mirror)
     bench_tell("factorized", from);
     cholmod_dense *x = bench_sure(cholmod_l_solve(CHOLMOD_A, L, g, &common));
     bench_tell("solve", from);
-    bench_tell_peak(before);
+    bench_tell_peak();
     cholmod_l_free_dense(&x, &common);
     cholmod_l_free_dense(&g, &common);
     cholmod_l_free_dense(&b, &common);
@@ -164,13 +164,12 @@ static void run_spqr(const lw_problem *problem)
     start(&common);
     cholmod_sparse *A = copy_matrix(problem->design, &common);
     cholmod_dense *b = copy_vector(problem->m, problem->value, &common);
-    int64_t before = lw_memory_peak();
     int ordering = problem->n > 500000 ? SPQR_ORDERING_METIS : SPQR_ORDERING_DEFAULT;
     bench_clock from = bench_now();
     cholmod_dense *x = SuiteSparseQR_C_backslash(ordering, SPQR_DEFAULT_TOL, A, b, &common);
     bench_sure(x);
     bench_tell("solve", from);
-    bench_tell_peak(before);
+    bench_tell_peak();
     cholmod_l_free_dense(&x, &common);
     cholmod_l_free_dense(&b, &common);
     cholmod_l_free_sparse(&A, &common);
@@ -182,13 +181,20 @@ int main(int argc, char **argv)
     if (argc != 3) return 2;
     bench_start();
     lw_problem *problem = bench_problem(argv[1]);
-    if (!strcmp(argv[2], "own")) run_own(problem, 0);
-    else if (!strcmp(argv[2], "certain")) run_own(problem, 1);
-    else if (!strcmp(argv[2], "inverse")) run_inverse(problem);
-    else if (!strcmp(argv[2], "cholmod")) run_cholmod(problem, 0);
-    else if (!strcmp(argv[2], "mirror")) run_cholmod(problem, 1);
-    else if (!strcmp(argv[2], "spqr")) run_spqr(problem);
-    else return 2;
+    if (!strcmp(argv[2], "own"))
+        run_own(problem, 0);
+    else if (!strcmp(argv[2], "certain"))
+        run_own(problem, 1);
+    else if (!strcmp(argv[2], "inverse"))
+        run_inverse(problem);
+    else if (!strcmp(argv[2], "cholmod"))
+        run_cholmod(problem, 0);
+    else if (!strcmp(argv[2], "mirror"))
+        run_cholmod(problem, 1);
+    else if (!strcmp(argv[2], "spqr"))
+        run_spqr(problem);
+    else
+        return 2;
     lw_problem_free(problem);
     return 0;
 }

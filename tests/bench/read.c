@@ -43,7 +43,8 @@ static void run_callbacks(const char *folder)
     FILE *file = bench_sure(fopen(path, "rb"));
     bench_clock from = bench_now();
     csv_init(&parser, CSV_STRICT);
-    while ((got = fread(buffer, 1, sizeof buffer, file)) > 0) csv_parse(&parser, buffer, got, count_field, count_row, &c);
+    while ((got = fread(buffer, 1, sizeof buffer, file)) > 0)
+        csv_parse(&parser, buffer, got, count_field, count_row, &c);
     csv_fini(&parser, count_field, count_row, &c);
     csv_free(&parser);
     bench_tell("read", from);
@@ -62,7 +63,7 @@ static void run_own(const char *folder, int threads)
     bench_check(lw_problem_read(folder, &(lw_read_options){0}, &watch, &problem, &error), &error);
     bench_tell("read", from);
     bench_tell_number("rows", (double)lw_sparse_nonzeros(problem->design));
-    bench_tell_peak(0);
+    bench_tell_peak();
     lw_problem_free(problem);
     lw_team_free(team);
 }
@@ -98,7 +99,8 @@ static void write_design(const lw_problem *problem, const char *folder, int shuf
     header(writer, (const char *const[]){"observation", "parameter", "coefficient", NULL});
     bench_check(lw_sparse_transpose(problem->design, &T, &error), &error);
     int64_t count = lw_sparse_nonzeros(T);
-    int32_t *row = bench_sure(LW_NEW_ARRAY(int32_t, count)), *order = bench_sure(LW_NEW_ARRAY(int32_t, count));
+    int32_t *row = bench_sure(LW_NEW_ARRAY(int32_t, count)),
+            *order = bench_sure(LW_NEW_ARRAY(int32_t, count));
     uint64_t state = 1234567;
     for (int64_t i = 0; i < T->columns; i++)
         for (int64_t p = T->start[i]; p < T->start[i + 1]; p++) row[p] = (int32_t)i, order[p] = (int32_t)p;

@@ -118,7 +118,7 @@ def smoothing(place, figures):
          (place.make('rays-every-100000.lwm', generate.rays, (316, 316), 30000, False, True), 10 ** 5, 40, 10)]
     for path, n, wanted, share in cases:
         top = largest_singular(path)
-        low, high, count, tool = repr(top * 1e-1), repr(top * 1e2), '50', place.tool('sweep')
+        low, high, count, tool = repr(top * 0.5), repr(top * 500), '50', place.tool('sweep')
         results = interleave({'sweep': [tool, path, 'smoothest', low, high, count, '0', 'sweep'],
                               'stacked': [tool, path, 'smoothest', low, high, count, '0', 'stacked']}, 3 if n < 10 ** 5 else 1)
         solved = results['stacked'][0]['solved']

@@ -32,7 +32,8 @@ int main(int argc, char **argv)
     lw_product_describe(op, &layout);
     bench_check(lw_golub_kahan_start(&gk, op, 1, problem->value, &error), &error);
     double *x = bench_random(problem->n), *wall = bench_sure(LW_NEW_ARRAY(double, steps)),
-           *processor = bench_sure(LW_NEW_ARRAY(double, steps)), *v = bench_sure(LW_NEW_ARRAY(double, problem->n));
+           *processor = bench_sure(LW_NEW_ARRAY(double, steps)),
+           *v = bench_sure(LW_NEW_ARRAY(double, problem->n));
     for (int s = 0; s < steps + 2; s++) {
         bench_clock from = bench_now();
         lw_golub_kahan_step(&gk);

@@ -3,7 +3,8 @@
  *   sweep     decompose once, curve and choices; prints choices, error bounds, steps
  *   solve     one solve at damping FROM
  *   separate  every damping of the grid solved alone to the error bound that the sweep gives it
- *   stacked   LSQR on [A; damping L] for every tenth damping (large problems: every twentieth), stopped at the steps that first bring
+ *   stacked   LSQR on [A; damping L] for every tenth damping (large problems: every twentieth), stopped at
+ * the steps that first bring
  *             ||L (x - x_sweep)|| / ||L x_sweep|| below 1e-3 */
 #include "bench.h"
 
@@ -65,7 +66,6 @@ static void run_sweep(setting *s)
 {
     lw_error error = {0};
     lw_decomposition *decomposition;
-    int64_t before = lw_memory_peak();
     bench_clock from = bench_now();
     decompose(s, 1, 1, 0, &decomposition);
     bench_tell("decompose", from);
@@ -74,7 +74,8 @@ static void run_sweep(setting *s)
     double chosen = smallest_choice(curve);
     lw_estimate *estimate;
     if (isfinite(chosen)) {
-        bench_check(decomposition->methods->estimate(decomposition, chosen, &s->watch, &estimate, &error), &error);
+        bench_check(decomposition->methods->estimate(decomposition, chosen, &s->watch, &estimate, &error),
+                    &error);
         lw_estimate_free(estimate);
     }
     bench_tell("with_model", from);
@@ -82,7 +83,7 @@ static void run_sweep(setting *s)
     for (int i = 0; i < curve->choices; i++)
         printf("choice_%s %.6g\n", lw_criterion_name(curve->choice[i].criterion), curve->choice[i].damping);
     bench_tell_number("steps", (double)curve->steps);
-    bench_tell_peak(before);
+    bench_tell_peak();
     for (int i = 0; i < curve->count; i++) printf("bound_%d %.6g\n", i, curve->row[i].point.error_bound);
     lw_curve_free(curve);
     lw_decomposition_free(decomposition);
@@ -94,7 +95,8 @@ static double solve_alone(setting *s, double lambda, double tolerance, int64_t *
     lw_decomposition *decomposition;
     lw_estimate *estimate;
     decompose(s, lambda, 0, tolerance, &decomposition);
-    bench_check(decomposition->methods->estimate(decomposition, lambda, &s->watch, &estimate, &error), &error);
+    bench_check(decomposition->methods->estimate(decomposition, lambda, &s->watch, &estimate, &error),
+                &error);
     double bound = estimate->point.error_bound;
     *steps += estimate->steps;
     lw_estimate_free(estimate);
@@ -152,14 +154,18 @@ static double stack_one(setting *s, lw_operator *A, lw_operator *L, double lambd
     lw_operator *op;
     lw_iterate_result result;
     double *x = bench_sure(LW_NEW_ZEROS(double, n)), *b = bench_sure(LW_NEW_ZEROS(double, system->rows + p));
-    watcher w = {s, wanted, bench_sure(LW_NEW_ARRAY(double, n)), bench_sure(LW_NEW_ARRAY(double, p)), 0, tolerance, 0};
+    watcher w = {
+        s, wanted, bench_sure(LW_NEW_ARRAY(double, n)), bench_sure(LW_NEW_ARRAY(double, p)), 0, tolerance, 0};
     lw_system_penalize(system, wanted, w.rest);
     for (int64_t i = 0; i < p; i++) w.size += w.rest[i] * w.rest[i];
     w.size = sqrt(w.size);
     memcpy(b, system->b, (size_t)system->rows * sizeof *b);
     bench_check(lw_operator_stacked(A, 0, lambda, L, 0, &op, &error), &error);
-    lw_iterate_options options = {
-        .tolerance = 1e-13, .steps = MOST_STACKED, .observe = watch_error, .observe_state = &w, .watch = &s->watch};
+    lw_iterate_options options = {.tolerance = 1e-13,
+                                  .steps = MOST_STACKED,
+                                  .observe = watch_error,
+                                  .observe_state = &w,
+                                  .watch = &s->watch};
     bench_check(lw_lsqr(op, b, &options, x, &result, &error), &error);
     options.steps = w.reached ? w.reached : MOST_STACKED;
     options.observe = NULL;
@@ -191,7 +197,9 @@ static void run_stacked(setting *s)
         lw_point point;
         double lambda = curve->row[i].point.lambda;
         if (!(curve->row[i].point.error_bound <= 1e-3)) continue;
-        bench_check(decomposition->methods->evaluate(decomposition, 1, &lambda, 0, &point, model, &s->watch, &error), &error);
+        bench_check(
+            decomposition->methods->evaluate(decomposition, 1, &lambda, 0, &point, model, &s->watch, &error),
+            &error);
         spent += stack_one(s, A, L, lambda, fmax(curve->row[i].point.error_bound, 1e-3), model, &steps);
         solved++;
     }
@@ -210,11 +218,17 @@ int main(int argc, char **argv)
     if (argc != 8) return 2;
     bench_start();
     lw_error error = {0};
-    setting s = {.problem = bench_problem(argv[1]), .count = atoi(argv[5]), .trace = atoi(argv[6]), .watch = {.memory = INT64_C(8) << 30}};
-    lw_system_options options = {.penalty = {.prefer = strcmp(argv[2], "smoothest") ? LW_PREFER_SMALLEST : LW_PREFER_SMOOTHEST}};
+    setting s = {.problem = bench_problem(argv[1]),
+                 .count = atoi(argv[5]),
+                 .trace = atoi(argv[6]),
+                 .watch = {.memory = INT64_C(8) << 30}};
+    lw_system_options options = {
+        .penalty = {.prefer = strcmp(argv[2], "smoothest") ? LW_PREFER_SMALLEST : LW_PREFER_SMOOTHEST}};
     s.grid = bench_sure(LW_NEW_ARRAY(double, s.count));
-    if (s.count > 1) lw_sweep_grid(atof(argv[3]), atof(argv[4]), s.count, s.grid);
-    else s.grid[0] = atof(argv[3]);
+    if (s.count > 1)
+        lw_sweep_grid(atof(argv[3]), atof(argv[4]), s.count, s.grid);
+    else
+        s.grid[0] = atof(argv[3]);
     bench_check(lw_system_new(s.problem, &options, &s.watch, &s.system, &error), &error);
     if (!strcmp(argv[7], "sweep")) {
         run_sweep(&s);

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Exact, sampled and bounded standard deviations of one damped problem of 2500 cells, against a dense inverse; and
- * the low-rank bound with penalties that leave directions undamped. */
+/* Exact, sampled and bounded standard deviations of one damped problem of 2500 cells, against a dense
+ * inverse; and the low-rank bound with penalties that leave directions undamped. */
 #include "check_certainty.h"
 
 #include "certainty/low_rank.h"
@@ -14,12 +14,14 @@
 enum { SIDE = 50, CELLS = SIDE * SIDE, RAYS = 500 };
 #define LAMBDA 30.0
 
-/* Straight rays across side x side cells, each with the length (in hundredths of the side) that steps along it count. */
+/* Straight rays across side x side cells, each with the length (in hundredths of the side) that steps along
+ * it count. */
 static lw_problem *rays_through(int side, int rays, uint64_t seed)
 {
     int cells = side * side;
     lw_sparse *rows = NULL, *columns = NULL;
-    double *value = LW_NEW_ARRAY(double, rays), *sigma = LW_NEW_ARRAY(double, rays), *length = LW_NEW_ARRAY(double, cells);
+    double *value = LW_NEW_ARRAY(double, rays), *sigma = LW_NEW_ARRAY(double, rays),
+           *length = LW_NEW_ARRAY(double, cells);
     double *x = LW_NEW_ARRAY(double, cells), *y = LW_NEW_ARRAY(double, cells);
     ck_assert_int_eq(lw_sparse_new(cells, rays, (int64_t)rays * 4 * side, 0, &rows, NULL), LW_OK);
     int64_t e = 0;
@@ -83,7 +85,8 @@ static damped damped_by(const char *engine, lw_problem *problem, lw_penalty_kind
     ck_assert_int_eq(lw_sparse_gram(d.system->matrix, NULL, &gram, &error), LW_OK);
     ck_assert_int_eq(lw_system_penalty_gram(d.system, &penalty, &error), LW_OK);
     for (int64_t j = 0; j < n; j++) {
-        for (int64_t e = gram->start[j]; e < gram->start[j + 1]; e++) d.Q[gram->index[e] + j * n] += gram->value[e];
+        for (int64_t e = gram->start[j]; e < gram->start[j + 1]; e++)
+            d.Q[gram->index[e] + j * n] += gram->value[e];
         for (int64_t e = penalty->start[j]; e < penalty->start[j + 1]; e++)
             d.Q[penalty->index[e] + j * n] += lambda * lambda * penalty->value[e];
     }
@@ -92,7 +95,8 @@ static damped damped_by(const char *engine, lw_problem *problem, lw_penalty_kind
     d.trace = (double)n;
     for (int64_t j = 0; j < n; j++)
         for (int64_t e = penalty->start[j]; e < penalty->start[j + 1]; e++)
-            d.trace -= lambda * lambda * (penalty->index[e] == j ? 1 : 2) * penalty->value[e] * d.Q[penalty->index[e] + j * n];
+            d.trace -= lambda * lambda * (penalty->index[e] == j ? 1 : 2) * penalty->value[e] *
+                       d.Q[penalty->index[e] + j * n];
     lw_sparse_free(gram);
     lw_sparse_free(penalty);
     return d;
@@ -107,8 +111,8 @@ static void damped_clear(damped *d)
     lw_free(d->Q);
 }
 
-/* Standard deviations of the posterior: exact, by the factor of an iterative and of a direct engine; samples, by
- * several seeds; the low-rank bound. */
+/* Standard deviations of the posterior: exact, by the factor of an iterative and of a direct engine; samples,
+ * by several seeds; the low-rank bound. */
 START_TEST(three_kinds_of_one_problem)
 {
     damped d = damped_by("lsqr", rays_through(SIDE, RAYS, 5), LW_PREFER_FLATTEST, LAMBDA);
@@ -157,8 +161,8 @@ START_TEST(three_kinds_of_one_problem)
 }
 END_TEST
 
-/* Bounds stay above the exact values however few the steps, and fall with them; what the penalty leaves undamped
- * (constants, planes) is in them. */
+/* Bounds stay above the exact values however few the steps, and fall with them; what the penalty leaves
+ * undamped (constants, planes) is in them. */
 START_TEST(bounds_hold_at_any_rank)
 {
     enum { FEW = 14 * 14 };
@@ -194,10 +198,14 @@ START_TEST(traces_agree)
         lw_error error = {0};
         lw_point point;
         double lambda = 3, sum = 0;
-        ck_assert_int_eq(d.decomposition->methods->estimate(d.decomposition, lambda, NULL, &estimate, &error), LW_OK);
-        ck_assert_int_eq(d.decomposition->methods->evaluate(d.decomposition, 1, &lambda, 1, &point, NULL, NULL, &error), LW_OK);
+        ck_assert_int_eq(d.decomposition->methods->estimate(d.decomposition, lambda, NULL, &estimate, &error),
+                         LW_OK);
+        ck_assert_int_eq(
+            d.decomposition->methods->evaluate(d.decomposition, 1, &lambda, 1, &point, NULL, NULL, &error),
+            LW_OK);
         if (_i < 2) ck_close(point.effective_parameters, d.trace, 1e-8);
-        ck_assert_int_eq(lw_certainty_make(d.decomposition, estimate, &options, true, NULL, &c, &error), LW_OK);
+        ck_assert_int_eq(lw_certainty_make(d.decomposition, estimate, &options, true, NULL, &c, &error),
+                         LW_OK);
         for (int64_t j = 0; j < c->parameters; j++) sum += c->resolution[j];
         ck_close(sum, d.trace, 1e-8);
         ck_close(c->effective_parameters, sum, 1e-12);
