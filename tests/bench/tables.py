@@ -32,6 +32,7 @@ class Figures:
         row = [self.section, figure, case, short(ours), short(theirs) if theirs is not None else '', unit, short(value), sign,
                met, f'{spread:.2f}', f'{self.load:.1f}', datetime.date.today().isoformat(), 'quick' if self.place.quick else '']
         self.rows.append(row)
+        self.keep()
         print(f'{figure}, {case}: {short(value)}' + (f' (wanted {sign}: {met})' if sign else ''), flush=True)
 
     def note(self, figure, text):
