@@ -115,7 +115,7 @@ def loop(place, figures):
 def smoothing(place, figures):
     cases = [(place.make('rays-every-1600.lwm', generate.rays, (40, 40), 1500, False, True), 1600, None, None)] if place.quick else \
         [(place.make('rays-every-10000.lwm', generate.rays, (100, 100), 6000, False, True), 10 ** 4, 20, 10),
-         (place.make('rays-every-100000.lwm', generate.rays, (316, 316), 30000, False, True), 10 ** 5, 40, 10)]
+         (place.make('rays-every-100000.lwm', generate.rays, (316, 316), 10000, False, True), 10 ** 5, 40, 10)]
     for path, n, wanted, share in cases:
         top = largest_singular(path)
         low, high, count, tool = repr(top * 0.5), repr(top * 500), '50', place.tool('sweep')
