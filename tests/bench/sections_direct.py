@@ -56,6 +56,8 @@ def certainty(place, figures):
         noise = max(spread(results['inverse'], 'inverse_cpu'), spread(results['inverse'], 'factorize_cpu'))
         case = f'2-D, n = {unknowns}'
         figures.add('selected inverse / supernodal factorization', case, inverse, factor, 's', inverse / factor, wanted, True, noise)
+        whole = middle(results['CHOLMOD'], 'factorized_cpu')
+        figures.add('selected inverse / bare CHOLMOD, from forming to the factor', case, inverse, whole, 's', inverse / whole, None, True, noise)
         ours, solve = middle(results['ours'], 'all_cpu'), middle(results['own'], 'solve_cpu')
         bare = middle(results['CHOLMOD'], 'solve_cpu')
         figures.add('solve, variances and redundancies / the bare solve', case, ours, solve, 's', ours / solve, 2.0, True, noise)
