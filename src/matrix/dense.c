@@ -6,9 +6,14 @@
 #include "core/memory.h"
 #include "matrix/dense.h"
 
+/* OpenBLAS makes its worker threads when it is loaded, and they spin for a tenth of a second before they sleep: they are sent
+ * home. Weak, because other builds of the library have no such threads and no such function. */
+extern int blas_thread_shutdown_(void) __attribute__((weak));
+
 void lw_dense_single_thread(void)
 {
     openblas_set_num_threads(1);
+    if (blas_thread_shutdown_) (void)blas_thread_shutdown_();
 }
 
 lw_status lw_dense_check(lw_error *error, int64_t a, int64_t b, int64_t c)

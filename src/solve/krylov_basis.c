@@ -11,7 +11,11 @@
 double *lw_basis_next(lw_basis *basis)
 {
     if (basis->count >= basis->most) return NULL;
-    if (basis->count == basis->blocks * LW_BASIS_BLOCK) {
+    if (basis->each == 0) {
+        int64_t fit = LW_BASIS_ROOM / (int64_t)(sizeof(double) * (size_t)(basis->length + 1));
+        basis->each = fit < LW_BASIS_LEAST ? LW_BASIS_LEAST : fit > LW_BASIS_MOST ? LW_BASIS_MOST : fit;
+    }
+    if (basis->count == basis->blocks * basis->each) {
         if (basis->blocks == basis->room) {
             int64_t room = 2 * basis->room + 16;
             double **block = lw_resize(basis->block, (size_t)room, sizeof *block);
@@ -19,12 +23,12 @@ double *lw_basis_next(lw_basis *basis)
             basis->block = block;
             basis->room = room;
         }
-        double *fresh = lw_alloc((size_t)basis->length, LW_BASIS_BLOCK * sizeof(double));
+        double *fresh = lw_alloc((size_t)basis->length, (size_t)basis->each * sizeof(double));
         if (fresh == NULL) return NULL;
         basis->block[basis->blocks++] = fresh;
     }
     int64_t at = basis->count++;
-    return basis->block[at / LW_BASIS_BLOCK] + at % LW_BASIS_BLOCK * basis->length;
+    return basis->block[at / basis->each] + at % basis->each * basis->length;
 }
 
 void lw_basis_clear(lw_basis *basis)
@@ -51,8 +55,8 @@ static void multiply_part(void *state, int part)
 {
     const product_job *job = state;
     int64_t n = job->basis->length, from = n * part / job->parts, rows = n * (part + 1) / job->parts - from;
-    for (int64_t at = 0, i = 0; at < job->k; at += LW_BASIS_BLOCK, i++) {
-        int64_t some = job->k - at < LW_BASIS_BLOCK ? job->k - at : LW_BASIS_BLOCK;
+    for (int64_t at = 0, i = 0; at < job->k; at += job->basis->each, i++) {
+        int64_t some = job->k - at < job->basis->each ? job->k - at : job->basis->each;
         lw_dense_multiply(0, 0, rows, job->count, some, 1.0, job->basis->block[i] + from, n, job->y + at,
                           job->k, at > 0 ? 1.0 : 0.0, job->w + from, n);
     }

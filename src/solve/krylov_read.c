@@ -10,7 +10,10 @@
 #include <math.h>
 
 /* Models that are multiplied together. */
-#define SOME 8
+/* Models made in one pass over the basis: as many as 64 MiB hold, 8 to 64. */
+#define LEAST_MODELS 8
+#define MOST_MODELS 64
+#define MODEL_ROOM 67108864
 /* Rounds of conjugate gradients started from the model, when rounding kept the recurrence from what it
  * promised. */
 #define ROUNDS 3
@@ -33,7 +36,7 @@ static lw_status iterate(lw_krylov *self, double lambda, bool started, int64_t m
     return self->iterate(self->op, self->b, &options, w, result, error);
 }
 
-/* Residuals of count <= SOME models in standard form, split into observations and weighted priors. */
+/* Residuals of some models in standard form, split into observations and weighted priors. */
 static void split_misfit(lw_krylov *self, int count, const double *w, double *r, lw_point *point)
 {
     int64_t m = self->op->rows, observations = self->base.system->observations;
@@ -72,12 +75,15 @@ static lw_status read_models(lw_krylov *self, int count, const double *lambda, c
     int64_t k = self->B[0].k;
     size_t width = (size_t)self->op->columns, m = (size_t)self->op->rows;
     bool split = self->base.system->priors > 0;
-    double *w = lw_alloc(width * SOME, sizeof(double)), *r = lw_alloc(split ? m * SOME : 0, sizeof(double));
+    int64_t fit = MODEL_ROOM / (int64_t)(sizeof(double) * (width + 1));
+    int most = fit < LEAST_MODELS ? LEAST_MODELS : fit > MOST_MODELS ? MOST_MODELS : (int)fit;
+    size_t room = (size_t)(count < most ? count : most);
+    double *w = lw_alloc(width * room, sizeof(double)), *r = lw_alloc(split ? m * room : 0, sizeof(double));
     lw_status status = LW_OK;
     if (w == NULL || r == NULL)
-        status = lw_fail_memory(error, "the models", (width + m) * SOME * sizeof(double));
-    for (int at = 0; at < count && status == LW_OK; at += SOME) {
-        int some = count - at < SOME ? count - at : SOME;
+        status = lw_fail_memory(error, "the models", (width + m) * room * sizeof(double));
+    for (int at = 0; at < count && status == LW_OK; at += most) {
+        int some = count - at < most ? count - at : most;
         status = make_models(self, some, lambda + at, y != NULL ? y + at * k : NULL, watch, w, error);
         if (status == LW_OK && split) split_misfit(self, some, w, r, point + at);
         if (status == LW_OK && models != NULL)

@@ -14,6 +14,8 @@
 
 /* rows + columns up to which an iterative engine looks at the whole range, whatever the criteria say. */
 #define SMALL_PROBLEM 2000
+/* A row whose error bound is this much below the tolerance is not read anew while the basis grows. */
+#define SETTLED 1e-3
 
 unsigned lw_sweep_criteria(const lw_sweep_options *options)
 {
@@ -97,13 +99,23 @@ static lw_status make_grid(sweep *s, const lw_sweep_options *options)
     return status;
 }
 
+/* Does row i no longer change? (With random probes its trace may still.) */
+static bool settled(const sweep *s, int i)
+{
+    const lw_curve_row *row = &s->look.row[i];
+    return !s->look.traced && row->usable && row->point.lambda == s->lambda[i] &&
+           row->point.error_bound <= SETTLED * s->look.tolerance;
+}
+
 /* Rows anew; those below the first of the topmost usable run are not looked at. */
 static lw_status evaluate(sweep *s)
 {
     lw_look *look = &s->look;
     if (lw_watch_cancelled(look->watch)) return LW_INTERRUPTED;
     if (!look->direct || look->cheap) {
-        lw_status status = lw_look_rows(look, look->count, s->lambda, look->row);
+        int open = look->count;
+        while (open > 0 && settled(s, open - 1)) open--;
+        lw_status status = lw_look_rows(look, open, s->lambda, look->row);
         if (status != LW_OK) return status;
     } else {
         for (int i = look->count - 1; i >= 0; i--) { /* each is a factorization: tick, and stop when asked */
