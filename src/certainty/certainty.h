@@ -139,7 +139,8 @@ typedef struct lw_certainty {
     int samples;        /**< used for sampled sigmas */
     bool multiplied;    /**< sigmas carry s0 */
     bool shift_of_own;  /**< largest_shift was searched in the reading's own equations only */
-    double effective_parameters; /**< damped: trace of the exact resolution, of the estimate, or of the probed one; NaN unknown */
+    double effective_parameters; /**< damped: trace of the exact resolution, of the estimate, or of the probed
+                                    one; NaN unknown */
     lw_covariance_entry *covariance;
     int64_t covariance_count;
     lw_ellipse *ellipses;

@@ -57,8 +57,10 @@ static lw_status factor_own(lw_cofactor *c, const lw_watch *watch, lw_error *err
             c->source.columns = c->columns;
             c->error = 8 * DBL_EPSILON / rcond;
         }
-        if (status == LW_UNSOLVABLE) status = LW_OK;
-        else if (status < 0) lw_fail(error, status, "%s", quiet.text);
+        if (status == LW_UNSOLVABLE)
+            status = LW_OK;
+        else if (status < 0)
+            lw_fail(error, status, "%s", quiet.text);
     }
     if (c->kind == LW_COFACTOR_NONE) {
         lw_cholesky_free(c->own_factor);

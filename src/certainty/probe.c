@@ -35,13 +35,14 @@ typedef struct probing {
     lw_operator *op;
     const lw_watch *watch;
     double lambda;
-    int64_t rows; /* of a right-hand side: equations and, damped, penalty */
+    int64_t rows;         /* of a right-hand side: equations and, damped, penalty */
     double *f, *z, *real; /* rows x BLOCK; columns x BLOCK; residuals of the real data (bootstrap) */
 } probing;
 
 static lw_status solve_block(probing *p, int count, lw_error *error)
 {
-    return p->decomposition->methods->solve_many(p->decomposition, p->lambda, count, p->f, NULL, NULL, NULL, p->z, NULL, error);
+    return p->decomposition->methods->solve_many(p->decomposition, p->lambda, count, p->f, NULL, NULL, NULL,
+                                                 p->z, NULL, error);
 }
 
 static void draw_noise(const probing *p, lw_random *random, double *f)
@@ -68,15 +69,20 @@ static double spike(const lw_probe_grid *grid, int64_t j, int64_t size)
     return 1.0;
 }
 
-static void fill_input(const lw_problem *problem, const lw_probe_plan *options, const lw_probe_grid *grid, int64_t size,
-                       double amplitude, double *input)
+static void fill_input(const lw_problem *problem, const lw_probe_plan *options, const lw_probe_grid *grid,
+                       int64_t size, double amplitude, double *input)
 {
     for (int64_t j = 0; j < problem->n; j++) {
         bool fixed = problem->fixed && problem->fixed[j];
-        if (fixed) input[j] = 0.0;
-        else if (options->kind == LW_PROBE_GIVEN) input[j] = options->given[j];
-        else if (grid->place[3 * j] < 0) input[j] = 0.0;
-        else input[j] = amplitude * (options->kind == LW_PROBE_SPIKES ? spike(grid, j, size) : checker(grid, j, size));
+        if (fixed)
+            input[j] = 0.0;
+        else if (options->kind == LW_PROBE_GIVEN)
+            input[j] = options->given[j];
+        else if (grid->place[3 * j] < 0)
+            input[j] = 0.0;
+        else
+            input[j] = amplitude *
+                       (options->kind == LW_PROBE_SPIKES ? spike(grid, j, size) : checker(grid, j, size));
     }
 }
 
@@ -92,10 +98,12 @@ static void put_through(probing *p, const double *input, double *f)
 static void take_model(const probing *p, const double *z, double *model, int64_t n)
 {
     memset(model, 0, (size_t)n * sizeof(double));
-    for (int64_t k = 0; k < p->system->columns; k++) model[p->system->parameter_of[k]] = z[k] * p->system->scale[k];
+    for (int64_t k = 0; k < p->system->columns; k++)
+        model[p->system->parameter_of[k]] = z[k] * p->system->scale[k];
 }
 
-static lw_status make_pattern(probing *p, const lw_probe_plan *options, int which, lw_probe *probe, lw_error *error)
+static lw_status make_pattern(probing *p, const lw_probe_plan *options, int which, lw_probe *probe,
+                              lw_error *error)
 {
     const lw_problem *problem = p->system->problem;
     lw_probe_pattern *pattern = &probe->pattern[which];
@@ -105,10 +113,14 @@ static lw_status make_pattern(probing *p, const lw_probe_plan *options, int whic
     int64_t cells = options->kind == LW_PROBE_GIVEN || options->length ? 1 : llrint(fmax(1.0, size));
     lw_status status = LW_OK;
     pattern->size = size;
-    if (options->kind == LW_PROBE_GIVEN) snprintf(pattern->name, sizeof pattern->name, "pattern as given");
+    if (options->kind == LW_PROBE_GIVEN)
+        snprintf(pattern->name, sizeof pattern->name, "pattern as given");
     else
-        snprintf(pattern->name, sizeof pattern->name, "%s %.6g%s", options->kind == LW_PROBE_SPIKES ? "spikes every" : "checker of", size,
-                 options->length ? "" : size == 1.0 ? " cell" : " cells");
+        snprintf(pattern->name, sizeof pattern->name, "%s %.6g%s",
+                 options->kind == LW_PROBE_SPIKES ? "spikes every" : "checker of", size,
+                 options->length ? ""
+                 : size == 1.0   ? " cell"
+                                 : " cells");
     pattern->input = LW_NEW_ARRAY(double, problem->n + 1);
     pattern->recovered = LW_NEW_ARRAY(double, problem->n + 1);
     pattern->amplitude = LW_NEW_ARRAY(double, problem->n + 1);
@@ -135,11 +147,12 @@ static lw_status make_pattern(probing *p, const lw_probe_plan *options, int whic
     return status;
 }
 
-/* Whitened residuals of the real data, centred and sorted into their groups: what the bootstrap draws from. */
+/* Whitened residuals of the real data, centred and sorted into their groups: what the bootstrap draws from.
+ */
 typedef struct pool {
     int64_t *start, *row; /* groups + 1; rows by group */
     int groups;
-    int32_t *group;       /* of each row */
+    int32_t *group; /* of each row */
 } pool;
 
 static void pool_clear(pool *q)
@@ -164,7 +177,9 @@ static lw_status pool_make(const probing *p, pool *out, lw_error *error)
     }
     for (int64_t i = 0; i < rows; i++) {
         bool used = !p->system->row_factor || p->system->row_factor[i] != 0.0;
-        int32_t group = i >= problem->m ? named + 1 : problem->group && problem->group[i] >= 0 ? problem->group[i] : named;
+        int32_t group = i >= problem->m                            ? named + 1
+                        : problem->group && problem->group[i] >= 0 ? problem->group[i]
+                                                                   : named;
         out->group[i] = used ? group : -1;
         if (used) out->start[group + 1]++;
     }
@@ -204,8 +219,10 @@ static lw_status make_trials(probing *p, const lw_probe_plan *options, lw_probe 
         if (status != LW_OK) break;
         memset(p->f, 0, (size_t)(p->rows * count) * sizeof(double));
         for (int c = 0; c < count; c++)
-            if (options->bootstrap) draw_residuals(p, &q, random, p->f + c * p->rows);
-            else draw_noise(p, random, p->f + c * p->rows);
+            if (options->bootstrap)
+                draw_residuals(p, &q, random, p->f + c * p->rows);
+            else
+                draw_noise(p, random, p->f + c * p->rows);
         status = solve_block(p, count, error);
         for (int c = 0; c < count && status >= 0; c++)
             for (int64_t k = 0; k < p->system->columns; k++) {
@@ -214,7 +231,8 @@ static lw_status make_trials(probing *p, const lw_probe_plan *options, lw_probe 
             }
         probe->trials += count;
     }
-    for (int64_t j = 0; j < n && probe->trials > 0; j++) probe->spread[j] = sqrt(probe->spread[j] / probe->trials);
+    for (int64_t j = 0; j < n && probe->trials > 0; j++)
+        probe->spread[j] = sqrt(probe->spread[j] / probe->trials);
     pool_clear(&q);
     lw_random_free(random);
     return status;
@@ -226,7 +244,8 @@ static int by_value(const void *a, const void *b)
     return (x > y) - (x < y);
 }
 
-/* Solves the real data: its rms correction (for an amplitude) and its whitened residuals (for the bootstrap). */
+/* Solves the real data: its rms correction (for an amplitude) and its whitened residuals (for the bootstrap).
+ */
 static lw_status solve_real(probing *p, double *rms, lw_error *error)
 {
     const lw_system *system = p->system;
@@ -235,7 +254,8 @@ static lw_status solve_real(probing *p, double *rms, lw_error *error)
     lw_status status = solve_block(p, 1, error);
     if (status < 0) return status;
     double sum = 0.0;
-    for (int64_t k = 0; k < system->columns; k++) sum += p->z[k] * system->scale[k] * p->z[k] * system->scale[k];
+    for (int64_t k = 0; k < system->columns; k++)
+        sum += p->z[k] * system->scale[k] * p->z[k] * system->scale[k];
     *rms = sqrt(sum / (double)(system->columns > 0 ? system->columns : 1));
     p->real = LW_NEW_ARRAY(double, system->rows + 1);
     if (!p->real) return lw_fail_memory(error, "residuals", (size_t)system->rows * sizeof(double));
@@ -245,7 +265,8 @@ static lw_status solve_real(probing *p, double *rms, lw_error *error)
 }
 
 /* 5 % of the median |x0|, or the rms of the real model where no x0 stands. */
-static lw_status choose_amplitude(probing *p, const lw_probe_plan *options, double *amplitude, lw_error *error)
+static lw_status choose_amplitude(probing *p, const lw_probe_plan *options, double *amplitude,
+                                  lw_error *error)
 {
     const lw_problem *problem = p->system->problem;
     double rms = 0.0;
@@ -265,22 +286,27 @@ static lw_status choose_amplitude(probing *p, const lw_probe_plan *options, doub
     return LW_OK;
 }
 
-lw_status lw_probe_make(lw_decomposition *decomposition, double lambda, const lw_probe_plan *options, const lw_watch *watch,
-                        lw_probe **out, lw_error *error)
+lw_status lw_probe_make(lw_decomposition *decomposition, double lambda, const lw_probe_plan *options,
+                        const lw_watch *watch, lw_probe **out, lw_error *error)
 {
     *out = NULL;
     lw_system *system = decomposition->system;
     if (!decomposition->methods->solve_many)
-        return lw_fail(error, LW_BAD_USAGE, "the %s engine cannot solve for several right-hand sides", decomposition->methods->engine);
-    probing p = {.decomposition = decomposition, .system = system, .watch = watch, .lambda = lambda,
+        return lw_fail(error, LW_BAD_USAGE, "the %s engine cannot solve for several right-hand sides",
+                       decomposition->methods->engine);
+    probing p = {.decomposition = decomposition,
+                 .system = system,
+                 .watch = watch,
+                 .lambda = lambda,
                  .rows = system->rows + (lambda > 0.0 ? system->penalty_rows : 0)};
     lw_probe *probe = LW_NEW(lw_probe);
     lw_product_options product = {.team = lw_watch_team(watch)};
     lw_status status = lw_system_operator(system, &product, watch, &p.op, error);
-    p.f = LW_NEW_ZEROS(double, p.rows * BLOCK + 1);
-    p.z = LW_NEW_ZEROS(double, system->columns * BLOCK + 1);
+    p.f = LW_NEW_ZEROS(double, p.rows *BLOCK + 1);
+    p.z = LW_NEW_ZEROS(double, system->columns *BLOCK + 1);
     if (status == LW_OK && (!probe || !p.f || !p.z))
-        status = lw_fail_memory(error, "the probe", (size_t)(p.rows + system->columns) * BLOCK * sizeof(double));
+        status =
+            lw_fail_memory(error, "the probe", (size_t)(p.rows + system->columns) * BLOCK * sizeof(double));
     if (status == LW_OK) {
         probe->parameters = system->problem->n;
         probe->noisy = system->problem->sigma != NULL;
@@ -301,7 +327,9 @@ lw_status lw_probe_make(lw_decomposition *decomposition, double lambda, const lw
     lw_free(p.f);
     lw_free(p.z);
     lw_free(p.real);
-    if (status < 0) lw_probe_free(probe);
-    else *out = probe;
+    if (status < 0)
+        lw_probe_free(probe);
+    else
+        *out = probe;
     return status;
 }

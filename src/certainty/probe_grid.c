@@ -31,8 +31,10 @@ static lw_status place_by_rank(const double *at, lw_probe_grid *grid, int d, lw_
         int64_t low = 0, high = distinct - 1;
         while (low < high) {
             int64_t middle = (low + high + 1) / 2;
-            if (sorted[middle] <= at[j] + same) low = middle;
-            else high = middle - 1;
+            if (sorted[middle] <= at[j] + same)
+                low = middle;
+            else
+                high = middle - 1;
         }
         grid->place[3 * j + d] = (int32_t)low;
     }
@@ -65,7 +67,9 @@ lw_status lw_probe_grid_make(const lw_problem *problem, double step, lw_probe_gr
         out->axes += problem->coordinate[d] != NULL;
     }
     if (out->axes == 0)
-        return lw_fail(error, LW_BAD_USAGE, "the pattern needs coordinates: parameters.csv has no column x, y or z; give a pattern file");
+        return lw_fail(
+            error, LW_BAD_USAGE,
+            "the pattern needs coordinates: parameters.csv has no column x, y or z; give a pattern file");
     out->place = LW_NEW_ZEROS(int32_t, 3 * problem->n + 1);
     if (!out->place) return lw_fail_memory(error, "the pattern", (size_t)problem->n * 12);
     for (int64_t j = 0; j < problem->n; j++)
@@ -74,8 +78,10 @@ lw_status lw_probe_grid_make(const lw_problem *problem, double step, lw_probe_gr
     lw_status status = LW_OK;
     for (int d = 0; d < 3 && status == LW_OK; d++) {
         if (!problem->coordinate[d]) continue;
-        if (step > 0.0) place_by_step(problem->coordinate[d], step, out, d);
-        else status = place_by_rank(problem->coordinate[d], out, d, error);
+        if (step > 0.0)
+            place_by_step(problem->coordinate[d], step, out, d);
+        else
+            status = place_by_rank(problem->coordinate[d], out, d, error);
     }
     if (status != LW_OK) lw_probe_grid_clear(out);
     return status;
@@ -92,7 +98,7 @@ void lw_probe_grid_clear(lw_probe_grid *grid)
 
 typedef struct table {
     const lw_probe_grid *grid;
-    double *sum;        /* (extent + 1)^3 places x SUMS, prefix sums */
+    double *sum; /* (extent + 1)^3 places x SUMS, prefix sums */
     int64_t stride[3];
 } table;
 
@@ -110,7 +116,8 @@ static void accumulate(table *t)
             for (int64_t j = d == 1; j <= e[1]; j++)
                 for (int64_t k = d == 2; k <= e[2]; k++)
                     for (int s = 0; s < SUMS; s++)
-                        t->sum[at(t, i, j, k) + s] += t->sum[at(t, i - (d == 0), j - (d == 1), k - (d == 2)) + s];
+                        t->sum[at(t, i, j, k) + s] +=
+                            t->sum[at(t, i - (d == 0), j - (d == 1), k - (d == 2)) + s];
 }
 
 static void box_sums(const table *t, const int32_t *place, int64_t reach, double *out)
@@ -123,7 +130,8 @@ static void box_sums(const table *t, const int32_t *place, int64_t reach, double
     for (int s = 0; s < SUMS; s++) {
         out[s] = 0.0;
         for (int corner = 0; corner < 8; corner++) {
-            int64_t i = corner & 1 ? low[0] : high[0], j = corner & 2 ? low[1] : high[1], k = corner & 4 ? low[2] : high[2];
+            int64_t i = corner & 1 ? low[0] : high[0], j = corner & 2 ? low[1] : high[1],
+                    k = corner & 4 ? low[2] : high[2];
             double value = t->sum[at(t, i, j, k) + s];
             out[s] += __builtin_popcount((unsigned)corner) % 2 ? -value : value;
         }
@@ -152,20 +160,23 @@ static void add_terms(double p, double r, double *sum)
     sum[5] += p * r;
 }
 
-lw_status lw_probe_compare(const lw_probe_grid *grid, int64_t reach, lw_probe_pattern *pattern, lw_error *error)
+lw_status lw_probe_compare(const lw_probe_grid *grid, int64_t reach, lw_probe_pattern *pattern,
+                           lw_error *error)
 {
     double all[SUMS] = {0};
     const int64_t *e = grid->extent;
     int64_t places = lw_bytes(lw_bytes(e[0] + 1, e[1] + 1), e[2] + 1);
     table t = {.grid = grid, .stride = {(e[1] + 1) * (e[2] + 1), e[2] + 1, 1}};
-    bool local = grid->place && places <= 64 * grid->n + 4096; /* a sparse box of places is compared as a whole */
-    if (local && !(t.sum = LW_NEW_ZEROS(double, SUMS * places)))
+    bool local =
+        grid->place && places <= 64 * grid->n + 4096; /* a sparse box of places is compared as a whole */
+    if (local && !(t.sum = LW_NEW_ZEROS(double, SUMS *places)))
         return lw_fail_memory(error, "the comparison of the pattern", (size_t)places * SUMS * sizeof(double));
     for (int64_t j = 0; j < grid->n; j++) {
         add_terms(pattern->input[j], pattern->recovered[j], all);
         const int32_t *place = grid->place ? grid->place + 3 * j : NULL;
         if (local && place[0] >= 0)
-            add_terms(pattern->input[j], pattern->recovered[j], t.sum + at(&t, place[0] + 1, place[1] + 1, place[2] + 1));
+            add_terms(pattern->input[j], pattern->recovered[j],
+                      t.sum + at(&t, place[0] + 1, place[1] + 1, place[2] + 1));
     }
     pattern->overall_amplitude = amplitude_of(all);
     pattern->overall_correlation = correlation_of(all);

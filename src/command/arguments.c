@@ -11,8 +11,8 @@
 #define FIRST_KEY 256
 #define MOST_OPTIONS 80
 
-static const lw_option *const tables[] = {lw_file_options, lw_run_options, lw_model_options, lw_certainty_option_table,
-                                          lw_probe_options};
+static const lw_option *const tables[] = {lw_file_options, lw_run_options, lw_model_options,
+                                          lw_certainty_option_table, lw_probe_options};
 
 const lw_option *lw_option_at(int i)
 {
@@ -42,7 +42,8 @@ static error_t read_option(int key, char *value, struct argp_state *state)
     reading *job = state->input;
     switch (key) {
     case ARGP_KEY_ARG:
-        if (job->arguments->problem) argp_error(state, "found a second operand '%s', expected one PROBLEM folder", value);
+        if (job->arguments->problem)
+            argp_error(state, "found a second operand '%s', expected one PROBLEM folder", value);
         job->arguments->problem = value;
         return 0;
     case ARGP_KEY_END:
@@ -93,7 +94,8 @@ static lw_status check_names(int argc, char **argv, unsigned groups, lw_error *e
         if (strncmp(argv[k], "--", 2) != 0) continue;
         const char *name = argv[k] + 2;
         size_t length = strcspn(name, "=");
-        bool known = (length == 4 && strncmp(name, "help", 4) == 0) || (length == 5 && strncmp(name, "usage", 5) == 0);
+        bool known =
+            (length == 4 && strncmp(name, "help", 4) == 0) || (length == 5 && strncmp(name, "usage", 5) == 0);
         const lw_option *option, *near = NULL;
         for (int i = 0; !known && (option = lw_option_at(i)); i++) {
             if (!(option->groups & groups)) continue;
@@ -101,18 +103,23 @@ static lw_status check_names(int argc, char **argv, unsigned groups, lw_error *e
             if (strncmp(option->name, name, length < 4 ? length : 4) == 0) near = option;
         }
         if (!known)
-            return lw_fail(error, LW_BAD_USAGE, "leastwise %s: found the unknown option --%.*s%s%s%s; leastwise %s --help lists the options",
-                           argv[0], (int)length, name, near ? ", did you mean --" : "", near ? near->name : "", near ? "?" : "", argv[0]);
+            return lw_fail(
+                error, LW_BAD_USAGE,
+                "leastwise %s: found the unknown option --%.*s%s%s%s; leastwise %s --help lists the options",
+                argv[0], (int)length, name, near ? ", did you mean --" : "", near ? near->name : "",
+                near ? "?" : "", argv[0]);
         const lw_option *exact = NULL;
         for (int i = 0; (option = lw_option_at(i)); i++)
-            if ((option->groups & groups) && strlen(option->name) == length && strncmp(option->name, name, length) == 0) exact = option;
+            if ((option->groups & groups) && strlen(option->name) == length &&
+                strncmp(option->name, name, length) == 0)
+                exact = option;
         if (exact && exact->argument && name[length] != '=') k++; /* its value is the next word */
     }
     return LW_OK;
 }
 
-lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *operands, unsigned groups, lw_arguments *out,
-                            lw_error *error)
+lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *operands, unsigned groups,
+                            lw_arguments *out, lw_error *error)
 {
     struct argp_option options[MOST_OPTIONS] = {{0}};
     int count = 0;
@@ -139,7 +146,8 @@ lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *
     error_t failed = argp_parse(&parser, argc, argv, 0, NULL, &job);
     argv[0] = first;
     if (job.status != LW_OK) return job.status;
-    return failed ? lw_fail(error, LW_BAD_USAGE, "wrong usage: see leastwise %s --help", out->command) : LW_OK;
+    return failed ? lw_fail(error, LW_BAD_USAGE, "wrong usage: see leastwise %s --help", out->command)
+                  : LW_OK;
 }
 
 void lw_arguments_clear(lw_arguments *arguments)

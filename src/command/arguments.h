@@ -1,5 +1,5 @@
-/** The options of all commands, each stated once: a table entry has its name, words for --help and the manual, the groups of
- *  commands that take it, and the function that reads its value into lw_arguments. */
+/** The options of all commands, each stated once: a table entry has its name, words for --help and the
+ * manual, the groups of commands that take it, and the function that reads its value into lw_arguments. */
 #ifndef LW_COMMAND_ARGUMENTS_H
 #define LW_COMMAND_ARGUMENTS_H
 
@@ -46,10 +46,10 @@ typedef struct lw_arguments {
     /* model */
     lw_damping_choice damping;
     double damping_value, noise_factor;
-    double grid_from, grid_to;  /**< --dampings FROM:TO:COUNT, 0 = from the problem */
+    double grid_from, grid_to; /**< --dampings FROM:TO:COUNT, 0 = from the problem */
     int grid_count;
-    double *grid_list;          /**< --dampings A,B,C; owned */
-    unsigned criteria;          /**< bits of lw_criterion; 0 = all that apply */
+    double *grid_list; /**< --dampings A,B,C; owned */
+    unsigned criteria; /**< bits of lw_criterion; 0 = all that apply */
     lw_penalty_options penalty;
     lw_misfit_kind misfit;
     lw_models_wanted models;
@@ -95,21 +95,25 @@ typedef struct lw_option {
 } lw_option;
 
 /** The tables, each ended by a NULL name. */
-extern const lw_option lw_file_options[], lw_run_options[], lw_model_options[], lw_certainty_option_table[], lw_probe_options[];
+extern const lw_option lw_file_options[], lw_run_options[], lw_model_options[], lw_certainty_option_table[],
+    lw_probe_options[];
 /** Entry number i over all tables, or NULL at the end. */
 const lw_option *lw_option_at(int i);
 
-/** Reads the words of a command (argv[0] = its name) with argp. Exits with status 2 on wrong usage, 0 after --help. */
-lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *operands, unsigned groups, lw_arguments *out,
-                            lw_error *error);
+/** Reads the words of a command (argv[0] = its name) with argp. Exits with status 2 on wrong usage, 0 after
+ * --help. */
+lw_status lw_arguments_read(int argc, char **argv, const char *doc, const char *operands, unsigned groups,
+                            lw_arguments *out, lw_error *error);
 void lw_arguments_clear(lw_arguments *arguments);
 
 /** Reading of values; the message says found and expected. */
-lw_status lw_value_double(const char *option, const char *text, double low, double high, const char *expected, double *out,
-                          lw_error *error);
-lw_status lw_value_integer(const char *option, const char *text, int64_t low, int64_t high, int64_t *out, lw_error *error);
+lw_status lw_value_double(const char *option, const char *text, double low, double high, const char *expected,
+                          double *out, lw_error *error);
+lw_status lw_value_integer(const char *option, const char *text, int64_t low, int64_t high, int64_t *out,
+                           lw_error *error);
 /** The position of text in words (NULL-terminated), or LW_BAD_USAGE listing them. */
-lw_status lw_value_word(const char *option, const char *text, const char *const *words, int *out, lw_error *error);
+lw_status lw_value_word(const char *option, const char *text, const char *const *words, int *out,
+                        lw_error *error);
 /** "4G", "512M", "1000000" in bytes. */
 lw_status lw_value_memory(const char *option, const char *text, int64_t *out, lw_error *error);
 

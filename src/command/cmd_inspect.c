@@ -11,7 +11,8 @@ int lw_command_inspect(const lw_command *self, int argc, char **argv)
     lw_arguments arguments;
     lw_error error = {0}, rank_error = {0};
     lw_work work = {0};
-    lw_status status = lw_arguments_read(argc, argv, self->doc, self->operands, self->groups, &arguments, &error);
+    lw_status status =
+        lw_arguments_read(argc, argv, self->doc, self->operands, self->groups, &arguments, &error);
     if (status == LW_OK) {
         arguments.read.tolerate = true;
         status = lw_work_read(&work, &arguments, &error);
@@ -23,7 +24,8 @@ int lw_command_inspect(const lw_command *self, int argc, char **argv)
     for (size_t i = 0; i < work.log.count; i++) printf("! %s\n", work.log.text[i]);
     fflush(stdout);
     work.qualified = LW_OK;
-    int exit_status = lw_work_exit(&work, status != LW_OK ? status : rank_status, status != LW_OK ? &error : &rank_error);
+    int exit_status =
+        lw_work_exit(&work, status != LW_OK ? status : rank_status, status != LW_OK ? &error : &rank_error);
     lw_work_close(&work);
     lw_arguments_clear(&arguments);
     return exit_status;

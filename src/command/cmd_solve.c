@@ -8,7 +8,8 @@ int lw_command_solve(const lw_command *self, int argc, char **argv)
     lw_error error = {0};
     lw_work work = {0};
     double lambda;
-    lw_status status = lw_arguments_read(argc, argv, self->doc, self->operands, self->groups, &arguments, &error);
+    lw_status status =
+        lw_arguments_read(argc, argv, self->doc, self->operands, self->groups, &arguments, &error);
     if (status == LW_OK) status = lw_work_open(&work, &arguments, &error);
     if (status == LW_OK) status = lw_work_system(&work, &error);
     if (status == LW_OK) status = lw_work_damping(&work, &lambda, &error);

@@ -21,7 +21,8 @@ int lw_command_sweep(const lw_command *self, int argc, char **argv);
 int lw_command_probe(const lw_command *self, int argc, char **argv);
 int lw_command_pack(const lw_command *self, int argc, char **argv);
 
-/** The manual page (troff, man macros) of a command, or of the program for NULL; and the completion script for bash. */
+/** The manual page (troff, man macros) of a command, or of the program for NULL; and the completion script
+ * for bash. */
 void lw_manual_write(const lw_command *command, FILE *to);
 void lw_completion_write(FILE *to);
 

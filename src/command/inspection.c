@@ -14,8 +14,8 @@ static void put_count(FILE *to, const char *label, int64_t count)
 static void put_range(FILE *to, const char *label, const lw_range *range, const char *unit)
 {
     if (range->count == 0) return;
-    fprintf(to, "  %-32s %.4g to %.4g, median %.4g%s%s\n", label, range->smallest, range->largest, range->median,
-            unit && *unit ? " " : "", unit ? unit : "");
+    fprintf(to, "  %-32s %.4g to %.4g, median %.4g%s%s\n", label, range->smallest, range->largest,
+            range->median, unit && *unit ? " " : "", unit ? unit : "");
 }
 
 /* "label: 12: A, B, C and 9 more" of ids. */
@@ -23,7 +23,8 @@ static void put_named(FILE *to, const char *label, const lw_ids *ids, const int6
 {
     if (count == 0) return;
     fprintf(to, "! %s (%lld):", label, (long long)count);
-    for (int64_t k = 0; k < count && k < MOST_NAMED; k++) fprintf(to, "%s %s", k ? "," : "", lw_ids_name(ids, number[k]));
+    for (int64_t k = 0; k < count && k < MOST_NAMED; k++)
+        fprintf(to, "%s %s", k ? "," : "", lw_ids_name(ids, number[k]));
     if (count > MOST_NAMED) fprintf(to, " and %lld more", (long long)(count - MOST_NAMED));
     fputc('\n', to);
 }
@@ -33,7 +34,8 @@ static void put_pairs(FILE *to, const char *label, const lw_ids *ids, const int6
     if (count == 0) return;
     fprintf(to, "! %s (%lld):", label, (long long)count);
     for (int64_t k = 0; k < count && k < MOST_NAMED; k++)
-        fprintf(to, "%s %s and %s", k ? ";" : "", lw_ids_name(ids, pair[2 * k]), lw_ids_name(ids, pair[2 * k + 1]));
+        fprintf(to, "%s %s and %s", k ? ";" : "", lw_ids_name(ids, pair[2 * k]),
+                lw_ids_name(ids, pair[2 * k + 1]));
     if (count > MOST_NAMED) fprintf(to, "; and %lld more", (long long)(count - MOST_NAMED));
     fputc('\n', to);
 }
@@ -45,7 +47,8 @@ static void put_weakest(const lw_work *work, FILE *to)
     fprintf(to, "Weakest parameters (observations that touch them, sum of absolute coefficients):\n");
     for (int k = 0; k < check->weakest_count; k++) {
         int64_t j = check->weakest[k];
-        fprintf(to, "  %-32s %lld, %.4g\n", lw_ids_name(work->problem->parameters, j), (long long)check->hits[j], check->coverage[j]);
+        fprintf(to, "  %-32s %lld, %.4g\n", lw_ids_name(work->problem->parameters, j),
+                (long long)check->hits[j], check->coverage[j]);
     }
 }
 
@@ -76,17 +79,20 @@ void lw_inspection_facts(const lw_work *work, FILE *to)
     put_count(to, "degrees of freedom at full rank", check->degrees_of_freedom);
     put_components(work, to);
     if (check->hit_range.count)
-        fprintf(to, "  %-32s %.0f to %.0f, median %.0f\n", "observations per parameter", check->hit_range.smallest,
-                check->hit_range.largest, check->hit_range.median);
+        fprintf(to, "  %-32s %.0f to %.0f, median %.0f\n", "observations per parameter",
+                check->hit_range.smallest, check->hit_range.largest, check->hit_range.median);
     put_range(to, "sizes of coefficients", &check->coefficient_range, "");
     put_range(to, "sigmas", &check->sigma_range, problem->value_unit);
     put_range(to, "sizes of values", &check->value_range, problem->value_unit);
     put_weakest(work, to);
-    put_named(to, "Observations with no equation, or none with a free parameter", problem->observations, check->zero_rows, check->zero_row_count);
-    put_named(to, "Parameters that no equation, prior or penalty reaches", problem->parameters, check->zero_columns,
-              check->zero_column_count);
-    put_named(to, "Parameters touched by one observation only", problem->parameters, check->single_hit, check->single_hit_count);
-    put_pairs(to, "Observations with the same equation", problem->observations, check->duplicate_rows, check->duplicate_row_count);
+    put_named(to, "Observations with no equation, or none with a free parameter", problem->observations,
+              check->zero_rows, check->zero_row_count);
+    put_named(to, "Parameters that no equation, prior or penalty reaches", problem->parameters,
+              check->zero_columns, check->zero_column_count);
+    put_named(to, "Parameters touched by one observation only", problem->parameters, check->single_hit,
+              check->single_hit_count);
+    put_pairs(to, "Observations with the same equation", problem->observations, check->duplicate_rows,
+              check->duplicate_row_count);
     put_pairs(to, "Parameters with proportional columns, which no data can tell apart", problem->parameters,
               check->duplicate_columns, check->duplicate_column_count);
 }
@@ -102,7 +108,8 @@ static void put_null_vector(const lw_work *work, const double *v, int64_t number
     fprintf(to, "    defect %lld: %lld parameters move together:", (long long)number + 1, (long long)moving);
     for (int64_t k = 0; k < system->columns && named < MOST_NAMED; k++)
         if (fabs(v[k] * system->scale[k]) > 1e-6 * top)
-            fprintf(to, "%s %s", named++ ? "," : "", lw_ids_name(work->problem->parameters, system->parameter_of[k]));
+            fprintf(to, "%s %s", named++ ? "," : "",
+                    lw_ids_name(work->problem->parameters, system->parameter_of[k]));
     if (moving > MOST_NAMED) fprintf(to, " and %lld more", (long long)(moving - MOST_NAMED));
     fputc('\n', to);
 }
@@ -113,7 +120,8 @@ static void put_rank(const lw_work *work, FILE *to)
     const lw_null_space *space = methods->null_space ? methods->null_space(work->decomposition) : NULL;
     int64_t rank = methods->rank ? methods->rank(work->decomposition) : -1;
     double rcond = methods->rcond ? methods->rcond(work->decomposition) : (double)NAN;
-    if (rank < 0) fprintf(to, "  %-32s not determined by an iterative engine\n", "rank");
+    if (rank < 0)
+        fprintf(to, "  %-32s not determined by an iterative engine\n", "rank");
     else {
         put_count(to, "rank", rank);
         put_count(to, "degrees of freedom", work->check.degrees_of_freedom + work->system->columns - rank);
@@ -122,12 +130,15 @@ static void put_rank(const lw_work *work, FILE *to)
         put_count(to, "datum defect", space->defect);
         for (int64_t k = 0; k < space->defect && k < MOST_NAMED; k++)
             put_null_vector(work, space->basis + k * space->columns, k, to);
-        fprintf(to, "    To cure it: damp (--damping, sweep) what the data cannot see; of a network hold one parameter a defect (`fixed`), "
+        fprintf(to, "    To cure it: damp (--damping, sweep) what the data cannot see; of a network hold one "
+                    "parameter a defect (`fixed`), "
                     "give `prior_sigma`, observe what is missing, or solve with --datum free.\n");
     } else if (rank >= 0) {
         put_count(to, "datum defect", 0);
     }
-    if (!isnan(rcond)) fprintf(to, "  %-32s about %.1e\n", "condition of scaled matrix", rcond > 0.0 ? 1.0 / rcond : HUGE_VAL);
+    if (!isnan(rcond))
+        fprintf(to, "  %-32s about %.1e\n", "condition of scaled matrix",
+                rcond > 0.0 ? 1.0 / rcond : HUGE_VAL);
 }
 
 lw_status lw_inspection_rank(lw_work *work, FILE *to, lw_error *error)
@@ -139,13 +150,17 @@ lw_status lw_inspection_rank(lw_work *work, FILE *to, lw_error *error)
     if (status < 0) return status;
     fprintf(to, "Rank and datum\n");
     if (!work->arguments->engine_named && choice.engine && !(choice.engine->abilities & LW_RANK)) {
-        fprintf(to, "  %-32s not determined: a factorization would take too much (name --engine to insist)\n", "rank");
+        fprintf(to, "  %-32s not determined: a factorization would take too much (name --engine to insist)\n",
+                "rank");
     } else {
-        const lw_engine *used = work->arguments->engine_named ? lw_engine_find(work->arguments->solve.engine) : choice.engine;
+        const lw_engine *used =
+            work->arguments->engine_named ? lw_engine_find(work->arguments->solve.engine) : choice.engine;
         work->arguments->solve.datum_free = !used || (used->abilities & LW_FREE_DATUM) != 0;
         status = lw_work_decompose(work, 0.0, false, error);
-        if (status >= 0) put_rank(work, to);
-        else if (status == LW_UNSOLVABLE) fprintf(to, "! %s\n", error->text);
+        if (status >= 0)
+            put_rank(work, to);
+        else if (status == LW_UNSOLVABLE)
+            fprintf(to, "! %s\n", error->text);
     }
     if (choice.engine) fprintf(to, "Engine: auto would take %s: %s\n", choice.engine->name, choice.why);
     return status > 0 ? LW_OK : status;

@@ -14,25 +14,33 @@
 
 const lw_command lw_commands[] = {
     {"inspect", "PROBLEM", "check a problem: sizes, coverage, rank and datum, conditioning; solves nothing",
-     "Reads the folder PROBLEM and says what can be said before anything is solved. A faulty problem is reported as far as it "
+     "Reads the folder PROBLEM and says what can be said before anything is solved. A faulty problem is "
+     "reported as far as it "
      "can be read; the exit status is then 3.",
      COMMON | LW_TAKES_ENGINE, lw_command_inspect},
     {"solve", "PROBLEM", "estimate the parameters at one damping",
-     "Reads the folder PROBLEM, estimates the parameters and writes a run folder with the estimates, their standard deviations, "
+     "Reads the folder PROBLEM, estimates the parameters and writes a run folder with the estimates, their "
+     "standard deviations, "
      "the residuals with their test statistics, a summary and a report.",
-     COMMON | LW_TAKES_RUN | LW_TAKES_MODEL | LW_TAKES_ENGINE | LW_TAKES_CERTAINTY | LW_TAKES_NETWORK, lw_command_solve},
+     COMMON | LW_TAKES_RUN | LW_TAKES_MODEL | LW_TAKES_ENGINE | LW_TAKES_CERTAINTY | LW_TAKES_NETWORK,
+     lw_command_solve},
     {"sweep", "PROBLEM", "estimate the parameters over a range of dampings and report the trade-off",
-     "Decomposes the problem once and reads from it the trade-off between misfit and size, what each criterion chooses, and the "
-     "models. parameters.csv and residuals.csv are those of the first criterion, in the order corner, discrepancy, gcv, risk, that "
+     "Decomposes the problem once and reads from it the trade-off between misfit and size, what each "
+     "criterion chooses, and the "
+     "models. parameters.csv and residuals.csv are those of the first criterion, in the order corner, "
+     "discrepancy, gcv, risk, that "
      "chooses without a warning.",
      COMMON | LW_TAKES_RUN | LW_TAKES_SWEEP | LW_TAKES_ENGINE | LW_TAKES_CERTAINTY, lw_command_sweep},
     {"probe", "PROBLEM", "what can these data resolve? spikes, checkerboards, noise trials",
-     "Makes data of a known pattern with the same equations, weights and noise, inverts them with the same penalty and damping, and "
-     "compares what comes back. Good recovery of small patterns does not prove good recovery of large ones, and such a test "
+     "Makes data of a known pattern with the same equations, weights and noise, inverts them with the same "
+     "penalty and damping, and "
+     "compares what comes back. Good recovery of small patterns does not prove good recovery of large ones, "
+     "and such a test "
      "says nothing of errors in the equations themselves.",
      COMMON | LW_TAKES_RUN | LW_TAKES_MODEL | LW_TAKES_ENGINE | LW_TAKES_PROBE, lw_command_probe},
     {"pack", "PROBLEM", "keep a problem in binary for fast rereading",
-     "Writes the problem as one checked binary file into the folder --out; every command takes that folder in place of PROBLEM and "
+     "Writes the problem as one checked binary file into the folder --out; every command takes that folder "
+     "in place of PROBLEM and "
      "gives the same bytes.",
      COMMON | LW_TAKES_RUN, lw_command_pack},
     {0}};
@@ -40,11 +48,13 @@ const lw_command lw_commands[] = {
 static void write_help(FILE *to)
 {
     fprintf(to, "Usage: leastwise COMMAND PROBLEM [OPTION...]\n\n"
-                "Least squares and regularized inversion of measurement data. A problem is a folder of plain CSV files.\n\n");
+                "Least squares and regularized inversion of measurement data. A problem is a folder of plain "
+                "CSV files.\n\n");
     for (const lw_command *command = lw_commands; command->name; command++)
         fprintf(to, "  leastwise %-8s %s   %s\n", command->name, command->operands, command->summary);
     fprintf(to, "\nleastwise COMMAND --help tells the options of a command.\n"
-                "Exit status: 0 done; 1 done with a warning that changes how the result may be used; 2 wrong usage; 3 faulty input;\n"
+                "Exit status: 0 done; 1 done with a warning that changes how the result may be used; 2 wrong "
+                "usage; 3 faulty input;\n"
                 "4 cannot be solved as stated; 5 the system failed; 130 interrupted.\n");
 }
 

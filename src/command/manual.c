@@ -10,9 +10,12 @@
 static void put(FILE *to, const char *text)
 {
     for (; *text; text++) {
-        if (*text == '\\') fputs("\\e", to);
-        else if (*text == '-') fputs("\\-", to);
-        else fputc(*text, to);
+        if (*text == '\\')
+            fputs("\\e", to);
+        else if (*text == '-')
+            fputs("\\-", to);
+        else
+            fputc(*text, to);
     }
 }
 
@@ -44,9 +47,11 @@ static void write_options(const lw_command *command, FILE *to)
 
 static void write_exit_status(FILE *to)
 {
-    fputs(".SH EXIT STATUS\n0 done; 1 done with a warning that changes how the result may be used; 2 wrong usage; 3 faulty input; "
+    fputs(".SH EXIT STATUS\n0 done; 1 done with a warning that changes how the result may be used; 2 wrong "
+          "usage; 3 faulty input; "
           "4 cannot be solved as stated; 5 the system failed; 130 interrupted.\n"
-          ".SH CAUTION\nResults do not replace local regulations and the judgement of licensed practice.\n", to);
+          ".SH CAUTION\nResults do not replace local regulations and the judgement of licensed practice.\n",
+          to);
 }
 
 void lw_manual_write(const lw_command *command, FILE *to)
@@ -57,14 +62,16 @@ void lw_manual_write(const lw_command *command, FILE *to)
     if (command) {
         fprintf(to, "\\-%s \\- ", command->name);
         put(to, command->summary);
-        fprintf(to, "\n.SH SYNOPSIS\n\\fBleastwise %s\\fR \\fI%s\\fR [\\fIOPTION\\fR...]\n.SH DESCRIPTION\n", command->name,
-                command->operands);
+        fprintf(to, "\n.SH SYNOPSIS\n\\fBleastwise %s\\fR \\fI%s\\fR [\\fIOPTION\\fR...]\n.SH DESCRIPTION\n",
+                command->name, command->operands);
         put(to, command->doc);
         fputs("\n.SH OPTIONS\n", to);
         write_options(command, to);
     } else {
         fputs(" \\- least squares and regularized inversion of measurement data\n"
-              ".SH SYNOPSIS\n\\fBleastwise\\fR \\fICOMMAND\\fR \\fIPROBLEM\\fR [\\fIOPTION\\fR...]\n.SH COMMANDS\n", to);
+              ".SH SYNOPSIS\n\\fBleastwise\\fR \\fICOMMAND\\fR \\fIPROBLEM\\fR [\\fIOPTION\\fR...]\n.SH "
+              "COMMANDS\n",
+              to);
         for (const lw_command *each = lw_commands; each->name; each++) {
             fprintf(to, ".TP\n\\fB%s\\fR\n", each->name);
             put(to, each->summary);
@@ -78,7 +85,8 @@ void lw_completion_write(FILE *to)
 {
     fputs("# bash completion for leastwise\n_leastwise() {\n"
           "    local word=${COMP_WORDS[COMP_CWORD]} command=${COMP_WORDS[1]}\n"
-          "    if [ \"$COMP_CWORD\" = 1 ]; then\n        COMPREPLY=($(compgen -W '", to);
+          "    if [ \"$COMP_CWORD\" = 1 ]; then\n        COMPREPLY=($(compgen -W '",
+          to);
     for (const lw_command *each = lw_commands; each->name; each++) fprintf(to, "%s ", each->name);
     fputs("--help --version' -- \"$word\"))\n        return\n    fi\n    case $command in\n", to);
     for (const lw_command *each = lw_commands; each->name; each++) {

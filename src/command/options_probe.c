@@ -6,8 +6,10 @@
 static lw_status set_pattern(lw_arguments *arguments, const char *value, lw_error *error)
 {
     (void)error;
-    if (strcmp(value, "spikes") == 0) arguments->pattern = LW_PATTERN_SPIKES;
-    else if (strcmp(value, "checker") == 0) arguments->pattern = LW_PATTERN_CHECKER;
+    if (strcmp(value, "spikes") == 0)
+        arguments->pattern = LW_PATTERN_SPIKES;
+    else if (strcmp(value, "checker") == 0)
+        arguments->pattern = LW_PATTERN_CHECKER;
     else {
         arguments->pattern = LW_PATTERN_FILE;
         arguments->pattern_file = value;
@@ -44,7 +46,8 @@ static lw_status set_size_unit(lw_arguments *arguments, const char *value, lw_er
 
 static lw_status set_amplitude(lw_arguments *arguments, const char *value, lw_error *error)
 {
-    return lw_value_double("amplitude", value, 1e-12, 1e12, "a positive amplitude in the unit of the parameters",
+    return lw_value_double("amplitude", value, 1e-12, 1e12,
+                           "a positive amplitude in the unit of the parameters",
                            &arguments->pattern_amplitude, error);
 }
 
@@ -64,10 +67,18 @@ static lw_status set_bootstrap(lw_arguments *arguments, const char *value, lw_er
 }
 
 const lw_option lw_probe_options[] = {
-    {"pattern", "spikes|checker|FILE", 0, LW_TAKES_PROBE, "input pattern: checker (default), spikes, or a CSV file parameter,value", set_pattern},
-    {"sizes", "LIST", 0, LW_TAKES_PROBE, "sizes of the checkers or spacings of the spikes (default 2,4 cells)", set_sizes},
-    {"size-unit", "cells|length", 0, LW_TAKES_PROBE, "what --sizes counts: cells (default) or units of the coordinates", set_size_unit},
-    {"amplitude", "A", 0, LW_TAKES_PROBE, "amplitude of the pattern, in the unit of the parameters (default 5 % of the median prior, or the rms of the real model)", set_amplitude},
-    {"trials", "N", 0, LW_TAKES_PROBE, "noise trials: spread of the estimate over N draws of the stated noise", set_trials},
-    {"bootstrap", NULL, 0, LW_TAKES_PROBE, "draw the trials by resampling the observations within their groups", set_bootstrap},
+    {"pattern", "spikes|checker|FILE", 0, LW_TAKES_PROBE,
+     "input pattern: checker (default), spikes, or a CSV file parameter,value", set_pattern},
+    {"sizes", "LIST", 0, LW_TAKES_PROBE,
+     "sizes of the checkers or spacings of the spikes (default 2,4 cells)", set_sizes},
+    {"size-unit", "cells|length", 0, LW_TAKES_PROBE,
+     "what --sizes counts: cells (default) or units of the coordinates", set_size_unit},
+    {"amplitude", "A", 0, LW_TAKES_PROBE,
+     "amplitude of the pattern, in the unit of the parameters (default 5 % of the median prior, or the rms "
+     "of the real model)",
+     set_amplitude},
+    {"trials", "N", 0, LW_TAKES_PROBE,
+     "noise trials: spread of the estimate over N draws of the stated noise", set_trials},
+    {"bootstrap", NULL, 0, LW_TAKES_PROBE,
+     "draw the trials by resampling the observations within their groups", set_bootstrap},
     {0}};

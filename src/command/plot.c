@@ -9,22 +9,27 @@
 static void set(struct libscols_line *line, size_t column, int digits, double a)
 {
     char text[40];
-    if (isnan(a)) snprintf(text, sizeof text, "-");
-    else snprintf(text, sizeof text, "%.*g", digits, a);
+    if (isnan(a))
+        snprintf(text, sizeof text, "-");
+    else
+        snprintf(text, sizeof text, "%.*g", digits, a);
     scols_line_set_data(line, column, text);
 }
 
 static void set_range(struct libscols_line *line, size_t column, double from, double to)
 {
     char text[80];
-    if (isnan(from)) snprintf(text, sizeof text, "-");
-    else snprintf(text, sizeof text, "%.3g to %.3g", from, to);
+    if (isnan(from))
+        snprintf(text, sizeof text, "-");
+    else
+        snprintf(text, sizeof text, "%.3g to %.3g", from, to);
     scols_line_set_data(line, column, text);
 }
 
 void lw_plot_choices(const lw_curve *curve, FILE *to)
 {
-    static const char *const head[] = {"CRITERION", "DAMPING", "WITHIN 5 %", "MISFIT", "SIZE", "EFFECTIVE PARAMETERS", "NOTE"};
+    static const char *const head[] = {
+        "CRITERION", "DAMPING", "WITHIN 5 %", "MISFIT", "SIZE", "EFFECTIVE PARAMETERS", "NOTE"};
     struct libscols_table *table = scols_new_table();
     if (!table) return;
     for (size_t c = 0; c < sizeof head / sizeof *head; c++)
@@ -58,7 +63,8 @@ typedef struct plot {
 static void mark(plot *p, const lw_point *point, char letter)
 {
     if (!(point->misfit > 0.0 && point->size > 0.0)) return;
-    double x = (log(point->misfit) - p->x0) / (p->x1 - p->x0), y = (log(point->size) - p->y0) / (p->y1 - p->y0);
+    double x = (log(point->misfit) - p->x0) / (p->x1 - p->x0),
+           y = (log(point->size) - p->y0) / (p->y1 - p->y0);
     if (!(x >= 0.0 && x <= 1.0 && y >= 0.0 && y <= 1.0)) return;
     p->cell[(int)lrint((1.0 - y) * (PLOT_HEIGHT - 1))][(int)lrint(x * (PLOT_WIDTH - 1))] = letter;
 }
@@ -77,11 +83,13 @@ void lw_plot_curve(const lw_curve *curve, FILE *to)
     for (int i = 0; i < curve->count; i++)
         if (curve->row[i].usable) mark(&p, &curve->row[i].point, '.');
     for (int i = 0; i < curve->choices; i++)
-        if (!isnan(curve->choice[i].damping)) mark(&p, &curve->choice[i].at.point, "CGDR"[curve->choice[i].criterion]);
+        if (!isnan(curve->choice[i].damping))
+            mark(&p, &curve->choice[i].at.point, "CGDR"[curve->choice[i].criterion]);
     fprintf(to, "size %.3g\n", exp(p.y1));
     for (int i = 0; i < PLOT_HEIGHT; i++) fprintf(to, "  |%s\n", p.cell[i]);
     fprintf(to, "  +");
     for (int i = 0; i < PLOT_WIDTH; i++) fputc('-', to);
-    fprintf(to, "\n  size %.3g; misfit %.3g to %.3g, both logarithmic; C corner, G gcv, D discrepancy, R risk\n", exp(p.y0),
-            exp(p.x0), exp(p.x1));
+    fprintf(to,
+            "\n  size %.3g; misfit %.3g to %.3g, both logarithmic; C corner, G gcv, D discrepancy, R risk\n",
+            exp(p.y0), exp(p.x0), exp(p.x1));
 }

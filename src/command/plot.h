@@ -6,7 +6,8 @@
 
 #include <stdio.h>
 
-/** One line a criterion: damping, range within 5 % of the optimum, misfit, size, warning mark (libsmartcols). */
+/** One line a criterion: damping, range within 5 % of the optimum, misfit, size, warning mark (libsmartcols).
+ */
 void lw_plot_choices(const lw_curve *curve, FILE *to);
 /** ln size over ln misfit, usable dampings as '.', choices by their letter. */
 void lw_plot_curve(const lw_curve *curve, FILE *to);

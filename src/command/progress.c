@@ -38,9 +38,12 @@ void lw_progress_begin(lw_progress *progress, bool quiet)
 
 static void write_remaining(double seconds, char *text, size_t room)
 {
-    if (seconds < 90.0) snprintf(text, room, ", about %.0f s left", seconds);
-    else if (seconds < 5400.0) snprintf(text, room, ", about %.0f min left", seconds / 60.0);
-    else snprintf(text, room, ", about %.1f h left", seconds / 3600.0);
+    if (seconds < 90.0)
+        snprintf(text, room, ", about %.0f s left", seconds);
+    else if (seconds < 5400.0)
+        snprintf(text, room, ", about %.0f min left", seconds / 60.0);
+    else
+        snprintf(text, room, ", about %.1f h left", seconds / 3600.0);
 }
 
 void lw_progress_tick(void *state, const char *what, double done, double total, const char *note)
@@ -57,9 +60,13 @@ void lw_progress_tick(void *state, const char *what, double done, double total, 
     if (elapsed < 1.0 || since(progress->last) < 0.2) return;
     clock_gettime(CLOCK_MONOTONIC, &progress->last);
     char remaining[48] = "";
-    if (total > 0.0 && done > 0.0 && done < total) write_remaining(elapsed * (total - done) / done, remaining, sizeof remaining);
-    if (total > 0.0) fprintf(stderr, "\r\033[K%s: %.0f %%%s%s%s", what, 100.0 * done / total, remaining, *note ? "  " : "", note);
-    else fprintf(stderr, "\r\033[K%s: %.0f s%s%s", what, elapsed, *note ? "  " : "", note);
+    if (total > 0.0 && done > 0.0 && done < total)
+        write_remaining(elapsed * (total - done) / done, remaining, sizeof remaining);
+    if (total > 0.0)
+        fprintf(stderr, "\r\033[K%s: %.0f %%%s%s%s", what, 100.0 * done / total, remaining, *note ? "  " : "",
+                note);
+    else
+        fprintf(stderr, "\r\033[K%s: %.0f s%s%s", what, elapsed, *note ? "  " : "", note);
     fflush(stderr);
     progress->line = true;
 }

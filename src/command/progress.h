@@ -8,8 +8,8 @@
 #include <time.h>
 
 typedef struct lw_progress {
-    bool shown;       /**< a terminal, and not --quiet */
-    bool line;        /**< a line stands on the terminal */
+    bool shown; /**< a terminal, and not --quiet */
+    bool line;  /**< a line stands on the terminal */
     char what[64];
     struct timespec phase, last;
 } lw_progress;
@@ -20,7 +20,8 @@ void lw_progress_tick(void *state, const char *what, double done, double total, 
 /** Clears the line. */
 void lw_progress_end(lw_progress *progress);
 
-/** Installs the handler of SIGINT and SIGTERM: the first asks the work to stop, a second ends the program at once (130). */
+/** Installs the handler of SIGINT and SIGTERM: the first asks the work to stop, a second ends the program at
+ * once (130). */
 void lw_interrupt_install(void);
 extern volatile sig_atomic_t lw_interrupt_asked;
 

@@ -6,28 +6,32 @@
 #include <stdio.h>
 #include <string.h>
 
-lw_status lw_value_double(const char *option, const char *text, double low, double high, const char *expected, double *out,
-                          lw_error *error)
+lw_status lw_value_double(const char *option, const char *text, double low, double high, const char *expected,
+                          double *out, lw_error *error)
 {
     lw_decimal value;
-    if (lw_decimal_parse(text, strlen(text), &value) != LW_NUMBER_FINE || !(value.high >= low && value.high <= high))
+    if (lw_decimal_parse(text, strlen(text), &value) != LW_NUMBER_FINE ||
+        !(value.high >= low && value.high <= high))
         return lw_fail(error, LW_BAD_USAGE, "--%s: found '%.40s', expected %s", option, text, expected);
     *out = value.high;
     return LW_OK;
 }
 
-lw_status lw_value_integer(const char *option, const char *text, int64_t low, int64_t high, int64_t *out, lw_error *error)
+lw_status lw_value_integer(const char *option, const char *text, int64_t low, int64_t high, int64_t *out,
+                           lw_error *error)
 {
     lw_decimal value;
     if (lw_decimal_parse(text, strlen(text), &value) != LW_NUMBER_FINE || value.low != 0.0 ||
-        !(value.high >= (double)low && value.high <= (double)high) || value.high != (double)(int64_t)value.high)
-        return lw_fail(error, LW_BAD_USAGE, "--%s: found '%.40s', expected a whole number from %lld to %lld", option, text,
-                       (long long)low, (long long)high);
+        !(value.high >= (double)low && value.high <= (double)high) ||
+        value.high != (double)(int64_t)value.high)
+        return lw_fail(error, LW_BAD_USAGE, "--%s: found '%.40s', expected a whole number from %lld to %lld",
+                       option, text, (long long)low, (long long)high);
     *out = (int64_t)value.high;
     return LW_OK;
 }
 
-lw_status lw_value_word(const char *option, const char *text, const char *const *words, int *out, lw_error *error)
+lw_status lw_value_word(const char *option, const char *text, const char *const *words, int *out,
+                        lw_error *error)
 {
     char list[300] = "";
     for (int i = 0; words[i]; i++) {
@@ -36,7 +40,11 @@ lw_status lw_value_word(const char *option, const char *text, const char *const 
             return LW_OK;
         }
         size_t used = strlen(list);
-        snprintf(list + used, sizeof list - used, "%s%s", i == 0 ? "" : words[i + 1] ? ", " : " or ", words[i]);
+        snprintf(list + used, sizeof list - used, "%s%s",
+                 i == 0         ? ""
+                 : words[i + 1] ? ", "
+                                : " or ",
+                 words[i]);
     }
     return lw_fail(error, LW_BAD_USAGE, "--%s: found '%.40s', expected %s", option, text, list);
 }
@@ -54,7 +62,8 @@ lw_status lw_value_memory(const char *option, const char *text, int64_t *out, lw
     lw_decimal value;
     if (lw_decimal_parse(text, length, &value) != LW_NUMBER_FINE || value.high * (double)factor < 1048576.0 ||
         value.high * (double)factor > 9e18)
-        return lw_fail(error, LW_BAD_USAGE, "--%s: found '%.40s', expected a size like 512M or 8G, at least 1M", option, text);
+        return lw_fail(error, LW_BAD_USAGE,
+                       "--%s: found '%.40s', expected a size like 512M or 8G, at least 1M", option, text);
     *out = (int64_t)(value.high * (double)factor);
     return LW_OK;
 }

@@ -15,7 +15,8 @@ double lw_work_lap(lw_work *work)
 {
     struct timespec now;
     clock_gettime(CLOCK_MONOTONIC, &now);
-    double seconds = (double)(now.tv_sec - work->mark.tv_sec) + 1e-9 * (double)(now.tv_nsec - work->mark.tv_nsec);
+    double seconds =
+        (double)(now.tv_sec - work->mark.tv_sec) + 1e-9 * (double)(now.tv_nsec - work->mark.tv_nsec);
     work->mark = now;
     return seconds;
 }
@@ -31,7 +32,8 @@ char *lw_work_out(const lw_arguments *arguments)
     return text;
 }
 
-/* An iterative run never touches the low parts; with `auto` they are kept up to this size of the design file. */
+/* An iterative run never touches the low parts; with `auto` they are kept up to this size of the design file.
+ */
 #define KEEP_LOW_BYTES (INT64_C(512) << 20)
 
 static bool keeps_low(const lw_arguments *arguments)
@@ -41,8 +43,10 @@ static bool keeps_low(const lw_arguments *arguments)
     if (engine) return (engine->abilities & LW_REFINED) != 0;
     char path[4200];
     struct stat info;
-    if (arguments->read.design) snprintf(path, sizeof path, "%s", arguments->read.design);
-    else snprintf(path, sizeof path, "%s/design.csv", arguments->problem);
+    if (arguments->read.design)
+        snprintf(path, sizeof path, "%s", arguments->read.design);
+    else
+        snprintf(path, sizeof path, "%s/design.csv", arguments->problem);
     return stat(path, &info) != 0 || info.st_size <= KEEP_LOW_BYTES;
 }
 
@@ -54,7 +58,8 @@ static lw_status scale_sigmas(lw_work *work, lw_error *error)
         size_t length = (size_t)(strrchr(text, '=') - text);
         lw_status status = lw_problem_scale_sigma(work->problem, text, length, factor, error);
         if (status != LW_OK) return status;
-        lw_log_add(&work->log, "The stated sigmas of %.*s were multiplied by %.6g: the test of the fit then proves less.",
+        lw_log_add(&work->log,
+                   "The stated sigmas of %.*s were multiplied by %.6g: the test of the fit then proves less.",
                    length ? (int)length : 11, length ? text : "all readings", factor);
     }
     return LW_OK;
@@ -116,7 +121,8 @@ lw_status lw_work_read(lw_work *work, lw_arguments *arguments, lw_error *error)
     status = lw_problem_read(arguments->problem, &arguments->read, &work->watch, &work->problem, error);
     if (work->problem) {
         lw_status more = status == LW_OK ? scale_sigmas(work, error) : LW_OK;
-        if (more == LW_OK) more = lw_check_problem(work->problem, &work->log, &work->check, status == LW_OK ? error : NULL);
+        if (more == LW_OK)
+            more = lw_check_problem(work->problem, &work->log, &work->check, status == LW_OK ? error : NULL);
         if (status == LW_OK) status = more;
         if (!arguments->variance_named) arguments->certainty.variance_estimated = !work->problem->sigma;
     }
@@ -154,12 +160,14 @@ lw_status lw_work_decompose(lw_work *work, double lambda, bool sweep, lw_error *
     work->decomposition = NULL;
     lw_solve_options options = work->arguments->solve;
     options.sweep = sweep;
-    lw_status status =
-        lw_decompose(work->system, lambda, &options, &work->watch, &work->engine, &work->decomposition, error);
+    lw_status status = lw_decompose(work->system, lambda, &options, &work->watch, &work->engine,
+                                    &work->decomposition, error);
     const lw_engine *engine = status >= 0 ? lw_engine_find(work->decomposition->methods->engine) : NULL;
     if (options.storage == LW_STORE_SINGLE && engine)
-        lw_log_add(&work->log, engine->abilities & LW_DIRECT ? "--storage single has no effect: the %s engine factors in double precision."
-                                                             : "The %s engine kept the coefficients in single precision; sums are double.",
+        lw_log_add(&work->log,
+                   engine->abilities & LW_DIRECT
+                       ? "--storage single has no effect: the %s engine factors in double precision."
+                       : "The %s engine kept the coefficients in single precision; sums are double.",
                    engine->name);
     lend(work);
     return status;
@@ -194,16 +202,23 @@ int lw_work_exit(const lw_work *work, lw_status status, const lw_error *error)
     if (status < 0) fprintf(stderr, "%s\n", error->text[0] ? error->text : lw_status_name(status));
     if (status == LW_OK && work) status = work->qualified;
     switch (status) {
-    case LW_OK: return 0;
-    case LW_INTERRUPTED: return 130;
+    case LW_OK:
+        return 0;
+    case LW_INTERRUPTED:
+        return 130;
     case LW_NOT_CONVERGED:
-    case LW_QUALIFIED: return 1;
-    case LW_BAD_USAGE: return 2;
-    case LW_BAD_INPUT: return 3;
-    case LW_UNSOLVABLE: return 4;
+    case LW_QUALIFIED:
+        return 1;
+    case LW_BAD_USAGE:
+        return 2;
+    case LW_BAD_INPUT:
+        return 3;
+    case LW_UNSOLVABLE:
+        return 4;
     case LW_NO_MEMORY:
     case LW_SYSTEM:
-    case LW_BAD_SHAPE: return 5;
+    case LW_BAD_SHAPE:
+        return 5;
     }
     return 5;
 }

@@ -35,7 +35,8 @@ typedef struct lw_work {
     lw_status qualified; /**< worst positive status so far */
 } lw_work;
 
-/** Threads, log, progress; reads and checks the problem. With read.tolerate a faulty problem is kept as far as it was read. */
+/** Threads, log, progress; reads and checks the problem. With read.tolerate a faulty problem is kept as far
+ * as it was read. */
 lw_status lw_work_read(lw_work *work, lw_arguments *arguments, lw_error *error);
 /** The same, but first makes sure that the run folder can be made. */
 lw_status lw_work_open(lw_work *work, lw_arguments *arguments, lw_error *error);
@@ -45,10 +46,11 @@ char *lw_work_out(const lw_arguments *arguments);
 lw_status lw_work_system(lw_work *work, lw_error *error);
 /** Decomposes for a sweep or for one damping. lambda 0: undamped. */
 lw_status lw_work_decompose(lw_work *work, double lambda, bool sweep, lw_error *error);
-/** The damping asked for: as given, or chosen by a sweep, whose decomposition then also gives the estimate. LW_UNSOLVABLE when
- *  the criterion picks none. */
+/** The damping asked for: as given, or chosen by a sweep, whose decomposition then also gives the estimate.
+ * LW_UNSOLVABLE when the criterion picks none. */
 lw_status lw_work_damping(lw_work *work, double *lambda, lw_error *error);
-/** What the curve says of the criterion that --damping names; LW_UNSOLVABLE, with the reason, when it picks none. */
+/** What the curve says of the criterion that --damping names; LW_UNSOLVABLE, with the reason, when it picks
+ * none. */
 lw_status lw_work_choice(lw_work *work, const lw_choice **out, lw_error *error);
 /** Sweeps and fills curve; LW_OK, or a positive status that is also kept in `qualified`. */
 lw_status lw_work_sweep(lw_work *work, lw_error *error);

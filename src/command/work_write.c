@@ -93,7 +93,8 @@ static lw_status write_covariance(const lw_work *work, const char *path, lw_erro
 static lw_status write_resolution(const lw_work *work, const char *path, lw_error *error)
 {
     const lw_certainty_options *options = &work->arguments->certainty;
-    return lw_write_resolution_rows(&work->run, options->resolution_of, options->resolution_count, path, error);
+    return lw_write_resolution_rows(&work->run, options->resolution_of, options->resolution_count, path,
+                                    error);
 }
 static lw_status write_ellipses(const lw_work *work, const char *path, lw_error *error)
 {
@@ -141,7 +142,8 @@ static void print_verdict(const lw_work *work)
     lw_verdict_make(&work->run, &verdict);
     printf("%s\n", verdict.headline);
     for (int k = 0; k < LW_VERDICT_NUMBERS; k++)
-        if (verdict.number[k].label[0]) printf("  %-25s %s\n", verdict.number[k].label, verdict.number[k].value);
+        if (verdict.number[k].label[0])
+            printf("  %-25s %s\n", verdict.number[k].label, verdict.number[k].value);
     if (work->curve) lw_plot_choices(work->curve, stdout);
     if (work->curve && isatty(STDOUT_FILENO)) lw_plot_curve(work->curve, stdout);
     for (int k = 0; k < verdict.cautions; k++) printf("! %s\n", verdict.caution[k]);
@@ -169,8 +171,10 @@ lw_status lw_work_write(lw_work *work, lw_error *error)
         status = path ? lw_write_summary(run, path, error) : lw_fail_memory(error, "a path", 1);
     }
     lw_progress_end(&work->progress);
-    if (status == LW_OK) status = lw_folder_commit(folder, error);
-    else lw_folder_abandon(folder);
+    if (status == LW_OK)
+        status = lw_folder_commit(folder, error);
+    else
+        lw_folder_abandon(folder);
     if (status == LW_OK && !work->arguments->quiet) print_verdict(work);
     return status;
 }

@@ -264,8 +264,8 @@ struct lw_random {
     gsl_rng *generator;
 };
 
-/* 32 bits, which is what the generator takes, that depend on every bit of both numbers (splitmix64: Steele, Lea & Flood,
- * OOPSLA 2014). */
+/* 32 bits, which is what the generator takes, that depend on every bit of both numbers (splitmix64: Steele,
+ * Lea & Flood, OOPSLA 2014). */
 static unsigned long seed_of(uint64_t seed, uint64_t stream)
 {
     uint64_t z = seed + UINT64_C(0x9e3779b97f4a7c15) * (stream + 1);

@@ -1,8 +1,9 @@
-/** The number that the user wrote, held as an unevaluated sum high + low of two doubles (about 32 digits), and the
- *  arithmetic on such sums.
+/** The number that the user wrote, held as an unevaluated sum high + low of two doubles (about 32 digits),
+ * and the arithmetic on such sums.
  *
- *  Sources: Dekker, Numerische Mathematik 18:224-242, 1971; Knuth, The Art of Computer Programming 2, 4.2.2 (two-sum);
- *  Joldes, Muller & Popescu, ACM TOMS 44(2):15res, 2017 (error bounds: add 3u^2, product 5u^2, quotient 9.8u^2). */
+ *  Sources: Dekker, Numerische Mathematik 18:224-242, 1971; Knuth, The Art of Computer Programming 2, 4.2.2
+ * (two-sum); Joldes, Muller & Popescu, ACM TOMS 44(2):15res, 2017 (error bounds: add 3u^2, product 5u^2,
+ * quotient 9.8u^2). */
 #ifndef LW_CORE_DECIMAL_H
 #define LW_CORE_DECIMAL_H
 
@@ -10,7 +11,8 @@
 #include <stdbool.h>
 #include <stddef.h>
 
-/** The doubles that are no number and infinite: NAN and INFINITY of math.h are floats, which -Wdouble-promotion tells. */
+/** The doubles that are no number and infinite: NAN and INFINITY of math.h are floats, which
+ * -Wdouble-promotion tells. */
 #define LW_NAN __builtin_nan("")
 #define LW_INFINITY __builtin_inf()
 
@@ -96,23 +98,23 @@ static inline lw_decimal lw_decimal_sqrt(lw_decimal a)
 typedef enum lw_number_fault {
     LW_NUMBER_FINE = 0,
     LW_NUMBER_EMPTY,
-    LW_NUMBER_SYNTAX,  /**< not a decimal number: a word, a hexadecimal, junk behind it, a comma */
+    LW_NUMBER_SYNTAX,     /**< not a decimal number: a word, a hexadecimal, junk behind it, a comma */
     LW_NUMBER_NOT_FINITE, /**< nan, inf */
-    LW_NUMBER_RANGE    /**< overflows a double */
+    LW_NUMBER_RANGE       /**< overflows a double */
 } lw_number_fault;
 
-/** Reads [+-]digits[.digits][(e|E)[+-]digits] of `length` bytes (blanks around it allowed; the digits on one side of
- *  the point may be missing). *out gets high = the correctly rounded double, high + low the value to at least 100 bits
- *  (fewer where low is subnormal; 0 where the value underflows). Never reads beyond length, no locale.
- *  Ordinary numbers (up to 19 digits, exponents to +-22) take a fast exact path. */
+/** Reads [+-]digits[.digits][(e|E)[+-]digits] of `length` bytes (blanks around it allowed; the digits on one
+ * side of the point may be missing). *out gets high = the correctly rounded double, high + low the value to
+ * at least 100 bits (fewer where low is subnormal; 0 where the value underflows). Never reads beyond length,
+ * no locale. Ordinary numbers (up to 19 digits, exponents to +-22) take a fast exact path. */
 lw_number_fault lw_decimal_parse(const char *text, size_t length, lw_decimal *out);
 /** "an empty field", "no number", ... */
 const char *lw_number_fault_name(lw_number_fault fault);
 
 /** Longest text of lw_double_write, with the final NUL. */
 #define LW_DOUBLE_TEXT 32
-/** Shortest decimal text that reads back to the same double ("0.1", "1e-07"); NaN gives "" (an unknown number is an
- *  empty field). Returns the length. */
+/** Shortest decimal text that reads back to the same double ("0.1", "1e-07"); NaN gives "" (an unknown number
+ * is an empty field). Returns the length. */
 size_t lw_double_write(double value, char text[LW_DOUBLE_TEXT]);
 
 #endif

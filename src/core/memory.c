@@ -31,24 +31,12 @@ static bool refused(void)
     return gate.call != NULL && gate.call(gate.state);
 }
 
-/* Asks for huge pages in the whole huge pages inside a large block. Only advice: a refusal changes nothing.
- */
-static void advise(void *block, size_t bytes)
-{
-    if (block == NULL || bytes < HUGE_FROM) return;
-    uintptr_t from = ((uintptr_t)block + HUGE_PAGE - 1) & ~(uintptr_t)(HUGE_PAGE - 1);
-    uintptr_t to = ((uintptr_t)block + bytes) & ~(uintptr_t)(HUGE_PAGE - 1);
-    if (to > from) (void)madvise((char *)block + (from - (uintptr_t)block), to - from, MADV_HUGEPAGE);
-}
-
 /* Every block can be given to realloc and free of the C library. */
 static void *take(size_t bytes)
 {
     if (bytes < ALIGNED_FROM) return malloc(bytes > 0 ? bytes : 1);
     if (bytes > PTRDIFF_MAX - ALIGNMENT) return NULL;
-    void *block = aligned_alloc(ALIGNMENT, (bytes + ALIGNMENT - 1) & ~(ALIGNMENT - 1));
-    advise(block, bytes);
-    return block;
+    return aligned_alloc(ALIGNMENT, (bytes + ALIGNMENT - 1) & ~(ALIGNMENT - 1));
 }
 
 void *lw_alloc(size_t count, size_t size)
@@ -93,8 +81,21 @@ void *lw_resize(void *block, size_t count, size_t size)
         free(moved);
         return aligned;
     }
-    advise(moved, bytes);
     return moved;
+}
+
+/* Huge pages are asked for where an array is read in scattered order again and again. Elsewhere clearing them costs more than they
+ * save: a 200 000-unknown network took 2.5 s of processor time without, 3.1 to 3.8 s with them. Only advice: a refusal changes
+ * nothing. */
+void *lw_alloc_scattered(size_t count, size_t size)
+{
+    void *block = lw_alloc(count, size);
+    size_t bytes = count * size;
+    if (block == NULL || bytes < HUGE_FROM) return block;
+    uintptr_t from = ((uintptr_t)block + HUGE_PAGE - 1) & ~(uintptr_t)(HUGE_PAGE - 1);
+    uintptr_t to = ((uintptr_t)block + bytes) & ~(uintptr_t)(HUGE_PAGE - 1);
+    if (to > from) (void)madvise((char *)block + (from - (uintptr_t)block), to - from, MADV_HUGEPAGE);
+    return block;
 }
 
 void lw_free(void *block)
@@ -112,17 +113,17 @@ char *lw_copy_text(const char *text)
 
 void *lw_hook_malloc(size_t bytes)
 {
-    return lw_alloc(bytes, 1);
+    return refused() ? NULL : malloc(bytes > 0 ? bytes : 1);
 }
 
 void *lw_hook_calloc(size_t count, size_t bytes)
 {
-    return lw_alloc_zero(count, bytes);
+    return refused() ? NULL : calloc(count > 0 ? count : 1, bytes > 0 ? bytes : 1);
 }
 
 void *lw_hook_realloc(void *block, size_t bytes)
 {
-    return lw_resize(block, bytes, 1);
+    return refused() ? NULL : realloc(block, bytes > 0 ? bytes : 1);
 }
 
 void lw_hook_free(void *block)

@@ -1,4 +1,4 @@
-/** Allocation: overflow-checked sizes, huge pages for large blocks, and a gate through which tests make the
+/** Allocation: overflow-checked sizes, huge pages where they pay, and a gate through which tests make the
  * k-th allocation fail (SuiteSparse, libcsv and jansson are given these functions too). */
 #ifndef LW_CORE_MEMORY_H
 #define LW_CORE_MEMORY_H
@@ -10,7 +10,9 @@
 /** count * size bytes, or NULL (overflow, no memory). count 0 gives a valid pointer. 64-byte aligned from 1
  * MiB on. */
 void *lw_alloc(size_t count, size_t size);
-/** The same, zero-filled. */
+/** The same for an array that is read in scattered order again and again: asks for huge pages from 4 MiB on. */
+void *lw_alloc_scattered(size_t count, size_t size);
+/** lw_alloc, zero-filled. */
 void *lw_alloc_zero(size_t count, size_t size);
 /** Grows or shrinks; on failure NULL and the old block stands. */
 void *lw_resize(void *block, size_t count, size_t size);

@@ -75,7 +75,8 @@ const char *lw_status_name(lw_status status)
 /* Where a message line points: the length of FILE, then line and column; false when it names no place. */
 static bool find_place(const char *text, size_t *file, long *line, long *column)
 {
-    for (const char *colon = strchr(text, ':'); colon && colon < strchrnul(text, '\n'); colon = strchr(colon + 1, ':')) {
+    for (const char *colon = strchr(text, ':'); colon && colon < strchrnul(text, '\n');
+         colon = strchr(colon + 1, ':')) {
         char *end, *last;
         *line = strtol(colon + 1, &end, 10);
         if (end == colon + 1 || *end != ':') continue;
@@ -91,7 +92,8 @@ static bool stands_after(const char *a, const char *b)
 {
     size_t file_a, file_b;
     long line_a, line_b, column_a, column_b;
-    if (!find_place(a, &file_a, &line_a, &column_a) || !find_place(b, &file_b, &line_b, &column_b)) return false;
+    if (!find_place(a, &file_a, &line_a, &column_a) || !find_place(b, &file_b, &line_b, &column_b))
+        return false;
     if (file_a != file_b || strncmp(a, b, file_a) != 0) return false;
     return line_a > line_b || (line_a == line_b && column_a > column_b);
 }
@@ -116,5 +118,6 @@ void lw_error_order(lw_error *error)
         }
     size_t used = 0;
     for (int i = 0; i < count; i++)
-        used += (size_t)snprintf(error->text + used, sizeof error->text - used, "%s%s", i ? "\n" : "", line[i]);
+        used +=
+            (size_t)snprintf(error->text + used, sizeof error->text - used, "%s%s", i ? "\n" : "", line[i]);
 }

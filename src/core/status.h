@@ -1,7 +1,8 @@
 /** What a call says of its outcome: negative an error, 0 done, positive "usable but qualified".
  *
- *  A function that can fail returns lw_status and takes a caller-owned lw_error, last argument, which may be NULL.
- *  Nothing below the command layer prints or exits. Why an iteration stopped is a result (lw_stop), not an error. */
+ *  A function that can fail returns lw_status and takes a caller-owned lw_error, last argument, which may be
+ * NULL. Nothing below the command layer prints or exits. Why an iteration stopped is a result (lw_stop), not
+ * an error. */
 #ifndef LW_CORE_STATUS_H
 #define LW_CORE_STATUS_H
 
@@ -24,7 +25,8 @@ typedef enum lw_status {
 #define LW_MOST_FAULTS 20
 #define LW_ERROR_TEXT 8192
 
-/** The message of a failed call: lines separated by newlines, no final newline. Zero-initialise: lw_error e = {0}; */
+/** The message of a failed call: lines separated by newlines, no final newline. Zero-initialise: lw_error e =
+ * {0}; */
 typedef struct lw_error {
     lw_status status;
     int faults; /**< messages added, also those that no longer fitted */
@@ -34,13 +36,15 @@ typedef struct lw_error {
 /** Replaces the message and returns `status`, so that a failure is one statement:
  *      return lw_fail(error, LW_BAD_INPUT, "%s:%ld:%ld: found ..., expected ...", ...);
  *  error may be NULL. */
-lw_status lw_fail(lw_error *error, lw_status status, const char *format, ...) __attribute__((format(printf, 3, 4)));
+lw_status lw_fail(lw_error *error, lw_status status, const char *format, ...)
+    __attribute__((format(printf, 3, 4)));
 
 /** Adds one more line (up to LW_MOST_FAULTS; later ones are counted only) and returns `status`. */
-lw_status lw_fail_also(lw_error *error, lw_status status, const char *format, ...) __attribute__((format(printf, 3, 4)));
+lw_status lw_fail_also(lw_error *error, lw_status status, const char *format, ...)
+    __attribute__((format(printf, 3, 4)));
 
-/** Puts the lines FILE:line:column: ... of each file into the order of the lines (faults that are found late come first where they
- *  stand first). Lines without a place keep theirs. */
+/** Puts the lines FILE:line:column: ... of each file into the order of the lines (faults that are found late
+ * come first where they stand first). Lines without a place keep theirs. */
 void lw_error_order(lw_error *error);
 
 /** LW_NO_MEMORY with "out of memory: WHAT needs N bytes". */

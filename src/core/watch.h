@@ -1,5 +1,6 @@
-/** What long work is given from outside: a progress tick, a cancel flag, the memory budget, seed and threads, and
- *  the log for warnings. Borrowed by every engine; a NULL watch means: silent, one thread, default budget. */
+/** What long work is given from outside: a progress tick, a cancel flag, the memory budget, seed and threads,
+ * and the log for warnings. Borrowed by every engine; a NULL watch means: silent, one thread, default budget.
+ */
 #ifndef LW_CORE_WATCH_H
 #define LW_CORE_WATCH_H
 
@@ -15,7 +16,8 @@
 #define LW_DEFAULT_MEMORY (INT64_C(4) << 30)
 #define LW_DEFAULT_SEED UINT64_C(20260401)
 
-/** what: a few words ("factorizing"); done of total in any unit, total 0 unknown; note: "", or a norm to show. */
+/** what: a few words ("factorizing"); done of total in any unit, total 0 unknown; note: "", or a norm to
+ * show. */
 typedef void lw_tick(void *state, const char *what, double done, double total, const char *note);
 
 typedef struct lw_watch {
@@ -37,6 +39,7 @@ lw_log *lw_watch_log(const lw_watch *watch);
 
 /** LW_OK when `bytes` fit the budget (and what the system has available), else LW_NO_MEMORY with
  *  "WHAT needs X, --memory allows Y; ADVICE". */
-lw_status lw_watch_budget(const lw_watch *watch, int64_t bytes, const char *what, const char *advice, lw_error *error);
+lw_status lw_watch_budget(const lw_watch *watch, int64_t bytes, const char *what, const char *advice,
+                          lw_error *error);
 
 #endif

@@ -6,8 +6,9 @@
 #include "core/memory.h"
 #include "matrix/dense.h"
 
-/* OpenBLAS makes its worker threads when it is loaded, and they spin for a tenth of a second before they sleep: they are sent
- * home. Weak, because other builds of the library have no such threads and no such function. */
+/* OpenBLAS makes its worker threads when it is loaded, and they spin for a tenth of a second before they
+ * sleep: they are sent home. Weak, because other builds of the library have no such threads and no such
+ * function. */
 extern int blas_thread_shutdown_(void) __attribute__((weak));
 
 void lw_dense_single_thread(void)

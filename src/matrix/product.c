@@ -100,7 +100,7 @@ static void reduce_range(void *state, int range)
 /* parts x width x 2 shorter, and one vector of the shorter side behind them. */
 static double *new_pairs(const product *m, int64_t width)
 {
-    return LW_NEW_ARRAY(double, m->lines.shorter *(2 * m->parts * width + 1));
+    return lw_alloc_scattered((size_t)(m->lines.shorter * (2 * m->parts * width + 1)), sizeof(double));
 }
 
 /* More vectors in one sweep need more pairs; without memory for them the sweeps carry fewer vectors, with the
@@ -312,10 +312,9 @@ static lw_status make_product(const lw_sparse *A, const lw_product_options *opti
     return LW_OK;
 }
 
-/* Below this a pass takes a few tenths of a millisecond, and waking the threads costs what they would save (measured at 400 000
- * nonzeros: a fifth more processor time for a fifth less by the clock). */
+/* Below this a pass takes a few tenths of a millisecond, and waking the threads costs what they would save
+ * (measured at 400 000 nonzeros: a fifth more processor time for a fifth less by the clock). */
 #define FEW_NONZEROS 1000000
-
 
 lw_status lw_product_new(const lw_sparse *A, const lw_product_options *options, lw_operator **out,
                          lw_error *error)

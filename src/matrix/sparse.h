@@ -49,8 +49,8 @@ lw_status lw_sparse_from_triplets(int64_t rows, int64_t columns, int64_t count, 
 /** C = A' A (upper triangle with diagonal, sorted), in double. row_weight (rows, may be NULL): A' diag(w) A.
  */
 lw_status lw_sparse_gram(const lw_sparse *A, const double *row_weight, lw_sparse **out, lw_error *error);
-/** LW_OK when A'A fits the memory budget while it is made, else LW_NO_MEMORY with `advice`. Counted entry by entry only
- * where a bound from the row lengths does not do. */
+/** LW_OK when A'A fits the memory budget while it is made, else LW_NO_MEMORY with `advice`. Counted entry by
+ * entry only where a bound from the row lengths does not do. */
 lw_status lw_sparse_gram_fits(const lw_sparse *A, const lw_watch *watch, const char *advice, lw_error *error);
 /** [A; B] with the same number of columns; C = alpha A over beta B. */
 lw_status lw_sparse_stack(double alpha, const lw_sparse *A, double beta, const lw_sparse *B, lw_sparse **out,

@@ -29,6 +29,13 @@ struct lw_ids {
     int64_t text_room;
 };
 
+static slot *new_slots(uint64_t count)
+{
+    slot *slots = lw_alloc_scattered((size_t)count, sizeof(slot));
+    if (slots != NULL) memset(slots, 0, (size_t)count * sizeof(slot));
+    return slots;
+}
+
 lw_status lw_ids_new(int64_t expected, lw_ids **out, lw_error *error)
 {
     *out = NULL;
@@ -39,7 +46,7 @@ lw_status lw_ids_new(int64_t expected, lw_ids **out, lw_error *error)
     ids->mask = slots - 1;
     ids->room = expected > 16 ? expected : 16;
     ids->text_room = 256;
-    ids->slots = LW_NEW_ZEROS(slot, slots);
+    ids->slots = new_slots(slots);
     ids->start = LW_NEW_ARRAY(int64_t, ids->room + 1);
     ids->text = LW_NEW_ARRAY(char, ids->text_room);
     if (ids->slots == NULL || ids->start == NULL || ids->text == NULL) {
@@ -104,7 +111,7 @@ static lw_status grow_slots(lw_ids *ids, int64_t more, lw_error *error)
     uint64_t need = 2 * (uint64_t)(ids->count + more), slots = ids->mask + 1;
     if (need <= slots || slots > UINT32_MAX) return LW_OK;
     while (slots < need && slots <= UINT32_MAX) slots *= 2;
-    slot *fresh = LW_NEW_ZEROS(slot, slots);
+    slot *fresh = new_slots(slots);
     if (fresh == NULL) return lw_fail_memory(error, "an id table", slots * sizeof(slot));
     for (uint64_t i = 0; i <= ids->mask; i++) {
         const slot *s = ids->slots + i;

@@ -134,8 +134,10 @@ bool lw_input_number(lw_input *input, int64_t row, int c, const lw_field *field,
     else if ((demand == LW_POSITIVE && !(out->high > 0.0)) || (demand == LW_NOT_NEGATIVE && out->high < 0.0))
         lw_input_refuse(input, row, c, expected[demand], "%s", lw_show(field, shown));
     else if (fabs(out->high) > LW_LARGEST_NUMBER || (demand == LW_POSITIVE && out->high < LW_LEAST_SIGMA))
-        lw_input_refuse(input, row, c, "a size within 1e-75 and 1e75, so that squares and quotients stay numbers (change the unit)",
-                        "%s", lw_show(field, shown));
+        lw_input_refuse(
+            input, row, c,
+            "a size within 1e-75 and 1e75, so that squares and quotients stay numbers (change the unit)",
+            "%s", lw_show(field, shown));
     else
         return true;
     *out = lw_decimal_of((double)NAN);

@@ -22,7 +22,8 @@ static lw_status add_value(lw_linear_rows *rows, int64_t row, const lw_field *fi
 {
     lw_decimal value = {(double)NAN, (double)row}; /* no value yet; low keeps the condition's first row */
     if (i == rows->values.count) {
-        if (field->length > 0) (void)lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value);
+        if (field->length > 0)
+            (void)lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value);
         return lw_numbers_add(&rows->values, value, rows->input.reading->error);
     }
     if (field->length == 0 || !lw_input_number(&rows->input, row, rows->value, field, LW_ANY_NUMBER, &value))
@@ -86,8 +87,8 @@ static void refuse_without_value(lw_linear_rows *rows)
 {
     for (int64_t i = 0; rows->with_value && i < rows->values.count; i++)
         if (isnan(rows->values.high[i]))
-            lw_input_refuse(&rows->input, (int64_t)rows->values.low[i], rows->value, "the value of the condition on one of its rows",
-                            "an empty field");
+            lw_input_refuse(&rows->input, (int64_t)rows->values.low[i], rows->value,
+                            "the value of the condition on one of its rows", "an empty field");
 }
 
 lw_status lw_linear_rows_read(lw_linear_rows *rows)

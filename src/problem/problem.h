@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /** A problem as its files state it: ids, decimals, blocks, conditions, bounds. Immutable once read.
  *
- *      minimise  (A x - b)' P (A x - b) + lambda^2 ||L (x - x0)||^2,  P = inverse covariance of the observations
- *      subject to lower <= x <= upper and C x = d
+ *      minimise  (A x - b)' P (A x - b) + lambda^2 ||L (x - x0)||^2,  P = inverse covariance of the
+ * observations subject to lower <= x <= upper and C x = d
  *
  *  m observations, n parameters. Arrays that a file did not give are NULL. Units are the user's. */
 #ifndef LW_PROBLEM_PROBLEM_H
@@ -18,7 +18,7 @@
 /** Columns that the program does not know and carries through to the output row of the same id. */
 typedef struct lw_carried {
     int columns;
-    char **name;    /**< columns */
+    char **name; /**< columns */
     int64_t rows;
     char *text;     /**< NUL-terminated fields one after another */
     int64_t *field; /**< rows x columns (row-major): offset into text, -1 = "" */
@@ -32,8 +32,9 @@ typedef struct lw_input_file {
     char sha256[65];
 } lw_input_file;
 
-/** Covariance of correlated observations, block by block. Members of block k: member[start[k] .. start[k+1]-1]; its full
- *  symmetric matrix (size x size) from value[value_start[k]]. Unit: product of the units of the two observations. */
+/** Covariance of correlated observations, block by block. Members of block k: member[start[k] ..
+ * start[k+1]-1]; its full symmetric matrix (size x size) from value[value_start[k]]. Unit: product of the
+ * units of the two observations. */
 typedef struct lw_covariance {
     int64_t blocks;
     int64_t *start, *value_start; /**< blocks + 1 */
@@ -46,11 +47,12 @@ typedef struct lw_problem {
     lw_ids *observations; /**< m */
     lw_ids *parameters;   /**< n */
     int64_t m, n;
-    lw_sparse *design;    /**< m x n, low parts in design->low (NULL: none needed, or not kept) */
-    bool low_kept;        /**< the low parts were asked for and kept */
+    lw_sparse *design; /**< m x n, low parts in design->low (NULL: none needed, or not kept) */
+    bool low_kept;     /**< the low parts were asked for and kept */
 
     double *value, *value_low; /**< m */
-    double *sigma, *sigma_low; /**< m, > 0; NULL: not given, unit weights, variance factor estimated. Correlated: sqrt of the diagonal */
+    double *sigma, *sigma_low; /**< m, > 0; NULL: not given, unit weights, variance factor estimated.
+                                  Correlated: sqrt of the diagonal */
     int32_t *group;            /**< m, number in group_names; NULL: no groups */
     lw_ids *group_names;
     lw_covariance *covariance; /**< NULL: uncorrelated */
@@ -61,16 +63,16 @@ typedef struct lw_problem {
     bool *fixed;                           /**< n */
     double *fixed_value, *fixed_low;       /**< n; 0 where free */
     double *lower, *upper;                 /**< n; -inf, +inf where open */
-    double *damp_weight;                   /**< n, >= 0; 1 where blank, 0 where blank and prior_sigma is given */
-    int8_t *datum;                         /**< n, 1 yes, 0 no; NULL: all yes */
-    int32_t *point, *region;               /**< n, numbers in point_names, region_names; -1 blank */
-    int8_t *axis;                          /**< n, lw_axis */
+    double *damp_weight;     /**< n, >= 0; 1 where blank, 0 where blank and prior_sigma is given */
+    int8_t *datum;           /**< n, 1 yes, 0 no; NULL: all yes */
+    int32_t *point, *region; /**< n, numbers in point_names, region_names; -1 blank */
+    int8_t *axis;            /**< n, lw_axis */
     lw_ids *point_names, *region_names;
-    double *coordinate[3];                 /**< x, y, z: n each; NaN where blank; NULL: no such column */
+    double *coordinate[3]; /**< x, y, z: n each; NaN where blank; NULL: no such column */
 
-    lw_sparse *penalty;                    /**< own L, rows x n; NULL */
+    lw_sparse *penalty; /**< own L, rows x n; NULL */
     lw_ids *penalty_rows;
-    lw_sparse *conditions;                 /**< C, c x n, with low; NULL */
+    lw_sparse *conditions;                   /**< C, c x n, with low; NULL */
     double *condition_value, *condition_low; /**< c, d */
     lw_ids *condition_names;
 
@@ -79,11 +81,19 @@ typedef struct lw_problem {
     char *value_unit, *parameter_unit; /**< "" where not given */
     char *folder;                      /**< as the user named it */
     int64_t repeated_added;            /**< pairs summed under --repeated add */
-    void *mapping;                     /**< read from a pack: the mapped file that holds the design's arrays */
+    void *mapping; /**< read from a pack: the mapped file that holds the design's arrays */
     size_t mapping_bytes;
 } lw_problem;
 
-typedef enum lw_axis { LW_AXIS_NONE = 0, LW_AXIS_EAST, LW_AXIS_NORTH, LW_AXIS_UP, LW_AXIS_X, LW_AXIS_Y, LW_AXIS_Z } lw_axis;
+typedef enum lw_axis {
+    LW_AXIS_NONE = 0,
+    LW_AXIS_EAST,
+    LW_AXIS_NORTH,
+    LW_AXIS_UP,
+    LW_AXIS_X,
+    LW_AXIS_Y,
+    LW_AXIS_Z
+} lw_axis;
 
 void lw_problem_free(lw_problem *problem);
 
@@ -92,15 +102,18 @@ typedef struct lw_read_options {
     const char *design, *observations, *parameters, *covariance, *penalty, *conditions;
     const char *value_unit, *parameter_unit;
     bool add_repeated;
-    bool keep_low;      /**< keep the low parts of the design (dense, cholesky, qr); an iterative run does not want them */
-    bool tolerate;      /**< inspect: return what could be read together with LW_BAD_INPUT */
-    const char *const *reserved; /**< NULL-terminated output column names that a carried column must not have */
+    bool keep_low; /**< keep the low parts of the design (dense, cholesky, qr); an iterative run does not want
+                      them */
+    bool tolerate; /**< inspect: return what could be read together with LW_BAD_INPUT */
+    const char *const
+        *reserved; /**< NULL-terminated output column names that a carried column must not have */
 } lw_read_options;
 
-/** Reads a problem folder (or a pack, see pack.h). LW_BAD_INPUT with all faults of the faulty files (up to 20), *out NULL
- *  unless options->tolerate; then *out has what could be read (NaN where a number was faulty, an empty design when
- *  there is none), and is NULL only when there is nothing to look at: no such folder, a damaged pack. LW_SYSTEM when a file cannot be read. Result owned by the caller. */
-lw_status lw_problem_read(const char *folder, const lw_read_options *options, const lw_watch *watch, lw_problem **out,
-                          lw_error *error);
+/** Reads a problem folder (or a pack, see pack.h). LW_BAD_INPUT with all faults of the faulty files (up to
+ * 20), *out NULL unless options->tolerate; then *out has what could be read (NaN where a number was faulty,
+ * an empty design when there is none), and is NULL only when there is nothing to look at: no such folder, a
+ * damaged pack. LW_SYSTEM when a file cannot be read. Result owned by the caller. */
+lw_status lw_problem_read(const char *folder, const lw_read_options *options, const lw_watch *watch,
+                          lw_problem **out, lw_error *error);
 
 #endif

@@ -211,7 +211,8 @@ void lw_report_cautions(lw_json *json, const lw_run *run)
     if (run->certainty) row_cautions(json, run);
     if (run->curve) curve_cautions(json, run);
     for (size_t i = 0; run->warnings && i < run->warnings->count; i++)
-        if (strncmp(run->warnings->text[i], "Not converged", 13) != 0) /* told above, where the model is read */
+        if (strncmp(run->warnings->text[i], "Not converged", 13) !=
+            0) /* told above, where the model is read */
             caution(json, "", "%s", run->warnings->text[i]);
     lw_json_close(json);
 }

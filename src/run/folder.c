@@ -27,7 +27,8 @@ static char *joined(const char *a, const char *b, const char *c)
     return text;
 }
 
-/* A run folder's files are plain: one level is removed, and a folder with anything else in it is left alone. */
+/* A run folder's files are plain: one level is removed, and a folder with anything else in it is left alone.
+ */
 static void remove_folder(const char *path)
 {
     DIR *dir = opendir(path);
@@ -71,15 +72,19 @@ lw_status lw_folder_check(const char *path, bool overwrite, lw_error *error)
     }
     if (lstat(clean, &info) == 0) {
         if (!S_ISDIR(info.st_mode))
-            status = lw_fail(error, LW_BAD_USAGE, "%s: found a file, expected a folder name for the run", clean);
+            status =
+                lw_fail(error, LW_BAD_USAGE, "%s: found a file, expected a folder name for the run", clean);
         else if (is_empty(clean))
             status = LW_OK;
         else if (access(summary, F_OK) != 0)
-            status = lw_fail(error, LW_BAD_USAGE, "%s: found a folder that is not a run (no summary.json): it is left alone; "
-                             "choose another with --out", clean);
-        else if (!overwrite)
-            status = lw_fail(error, LW_BAD_USAGE, "%s: this run exists already: give --overwrite, or another folder with --out",
+            status = lw_fail(error, LW_BAD_USAGE,
+                             "%s: found a folder that is not a run (no summary.json): it is left alone; "
+                             "choose another with --out",
                              clean);
+        else if (!overwrite)
+            status =
+                lw_fail(error, LW_BAD_USAGE,
+                        "%s: this run exists already: give --overwrite, or another folder with --out", clean);
         if (status != LW_OK) goto done;
     } else if (errno != ENOENT) {
         status = lw_fail(error, LW_SYSTEM, "%s: %s", clean, strerror(errno));
@@ -91,8 +96,10 @@ lw_status lw_folder_check(const char *path, bool overwrite, lw_error *error)
         goto done;
     }
     char *slash = strrchr(parent, '/');
-    if (slash == parent) slash[1] = '\0';
-    else if (slash) *slash = '\0';
+    if (slash == parent)
+        slash[1] = '\0';
+    else if (slash)
+        *slash = '\0';
     const char *where = slash ? parent : ".";
     if (access(where, W_OK | X_OK) != 0)
         status = lw_fail(error, LW_SYSTEM, "%s: cannot write here: %s", where, strerror(errno));
@@ -129,7 +136,8 @@ lw_status lw_folder_begin(const char *path, bool overwrite, lw_folder **out, lw_
     struct stat info;
     folder->replace = lstat(folder->path, &info) == 0;
     if (mkdir(folder->sibling, 0777) != 0) {
-        status = lw_fail(error, LW_SYSTEM, "%s: cannot make the folder: %s", folder->sibling, strerror(errno));
+        status =
+            lw_fail(error, LW_SYSTEM, "%s: cannot make the folder: %s", folder->sibling, strerror(errno));
         folder_free(folder);
         return status;
     }
@@ -158,7 +166,9 @@ lw_status lw_folder_commit(lw_folder *folder, lw_error *error)
         failed = renameat2(AT_FDCWD, folder->sibling, AT_FDCWD, folder->path, RENAME_NOREPLACE);
         if (failed && (errno == EINVAL || errno == ENOSYS)) failed = rename(folder->sibling, folder->path);
     }
-    if (failed) status = lw_fail(error, LW_SYSTEM, "%s: cannot put the run in place: %s", folder->path, strerror(errno));
+    if (failed)
+        status =
+            lw_fail(error, LW_SYSTEM, "%s: cannot put the run in place: %s", folder->path, strerror(errno));
     remove_folder(folder->sibling);
     folder_free(folder);
     return status;

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-#include "core/decimal.h"
 #include "run/run.h"
+#include "core/decimal.h"
 
 #include "core/memory.h"
 #include "matrix/vector.h"
@@ -9,7 +9,8 @@
 
 const char *lw_run_objective(void)
 {
-    return "minimise (A x - b)' P (A x - b) + lambda^2 ||L (x - x0)||^2, P = inverse covariance of the observations; "
+    return "minimise (A x - b)' P (A x - b) + lambda^2 ||L (x - x0)||^2, P = inverse covariance of the "
+           "observations; "
            "residual = predicted - observed";
 }
 

@@ -22,24 +22,24 @@ typedef struct lw_run {
     const char *folder;       /**< the run folder's final name */
     const lw_problem *problem;
     const lw_system *system;
-    const lw_check *check;    /**< hits and coverage */
+    const lw_check *check; /**< hits and coverage */
     lw_engine_choice engine;
-    const lw_estimate *estimate;   /**< the answer (solve), or the chosen model (sweep) */
-    const lw_curve *curve;         /**< sweep */
-    const double *models;          /**< sweep: n x curve->count model values, or NULL */
+    const lw_estimate *estimate; /**< the answer (solve), or the chosen model (sweep) */
+    const lw_curve *curve;       /**< sweep */
+    const double *models;        /**< sweep: n x curve->count model values, or NULL */
     const lw_certainty *certainty;
     const lw_certainty_options *asked; /**< what was asked of it: meaning of sigma, lists of parameters */
     const lw_outlier_log *outliers;
-    const lw_probe *probe;         /**< probe */
-    const double *weight;          /**< rows: final robust weights, or NULL */
-    const int8_t *at_bound;        /**< parameters: -1, 0, +1, or NULL */
-    const double *bound_multiplier;/**< parameters */
-    double damping;                /**< lambda used; 0 none */
-    const char *damping_chosen_by; /**< "none", "value", "corner", "gcv", "discrepancy", "risk" */
+    const lw_probe *probe;          /**< probe */
+    const double *weight;           /**< rows: final robust weights, or NULL */
+    const int8_t *at_bound;         /**< parameters: -1, 0, +1, or NULL */
+    const double *bound_multiplier; /**< parameters */
+    double damping;                 /**< lambda used; 0 none */
+    const char *damping_chosen_by;  /**< "none", "value", "corner", "gcv", "discrepancy", "risk" */
     double effective_parameters;
     bool variance_estimated;
-    double rms;                    /**< root mean square of the residuals, unit of the readings */
-    double variance_reduction;     /**< 1 - misfit^2 / misfit^2 at x0 */
+    double rms;                /**< root mean square of the residuals, unit of the readings */
+    double variance_reduction; /**< 1 - misfit^2 / misfit^2 at x0 */
     double tolerance;
     uint64_t seed;
     bool interrupted;

@@ -82,31 +82,39 @@ static void write_faces(FILE *file, const char *name, const axis *a)
     fprintf(file, "%s_COORDINATES %lld double\n", name, (long long)a->count + 1);
     for (int64_t k = 0; k <= a->count; k++) {
         double face;
-        if (a->count == 1) face = a->at[0] + (k ? 0.5 : -0.5);
-        else if (k == 0) face = 1.5 * a->at[0] - 0.5 * a->at[1];
-        else if (k == a->count) face = 1.5 * a->at[k - 1] - 0.5 * a->at[k - 2];
-        else face = 0.5 * (a->at[k - 1] + a->at[k]);
+        if (a->count == 1)
+            face = a->at[0] + (k ? 0.5 : -0.5);
+        else if (k == 0)
+            face = 1.5 * a->at[0] - 0.5 * a->at[1];
+        else if (k == a->count)
+            face = 1.5 * a->at[k - 1] - 0.5 * a->at[k - 2];
+        else
+            face = 0.5 * (a->at[k - 1] + a->at[k]);
         fprintf(file, "%.17g\n", face);
     }
 }
 
-static void write_field(FILE *file, const layout *where, const char *name, const double *value, const int64_t *whole)
+static void write_field(FILE *file, const layout *where, const char *name, const double *value,
+                        const int64_t *whole)
 {
     if (!value && !whole) return;
     fprintf(file, "SCALARS %s double 1\nLOOKUP_TABLE default\n", name);
     for (int64_t k = 0; k < where->members; k++) {
         int64_t j = where->cell ? where->cell[k] : where->member[k];
         double v = value ? value[j] : (double)whole[j];
-        if (isnan(v)) fputs("nan\n", file);
-        else fprintf(file, "%.17g\n", v);
+        if (isnan(v))
+            fputs("nan\n", file);
+        else
+            fprintf(file, "%.17g\n", v);
     }
 }
 
 static void write_geometry(FILE *file, const lw_problem *problem, const layout *where)
 {
     if (where->cell) {
-        fprintf(file, "DATASET RECTILINEAR_GRID\nDIMENSIONS %lld %lld %lld\n", (long long)where->axes[0].count + 1,
-                (long long)where->axes[1].count + 1, (long long)where->axes[2].count + 1);
+        fprintf(file, "DATASET RECTILINEAR_GRID\nDIMENSIONS %lld %lld %lld\n",
+                (long long)where->axes[0].count + 1, (long long)where->axes[1].count + 1,
+                (long long)where->axes[2].count + 1);
         write_faces(file, "X", &where->axes[0]);
         write_faces(file, "Y", &where->axes[1]);
         write_faces(file, "Z", &where->axes[2]);
@@ -130,7 +138,8 @@ static lw_status find_members(const lw_problem *problem, layout *where, lw_error
         if (known) where->member[where->members++] = j;
     }
     if (where->members == 0)
-        return lw_fail(error, LW_BAD_USAGE, "--vtk: no parameter has coordinates x, y or z in parameters.csv");
+        return lw_fail(error, LW_BAD_USAGE,
+                       "--vtk: no parameter has coordinates x, y or z in parameters.csv");
     return LW_OK;
 }
 
@@ -139,9 +148,11 @@ lw_status lw_write_vtk(const lw_run *run, const char *path, lw_error *error)
     layout where = {0};
     FILE *file = NULL;
     lw_status status = find_members(run->problem, &where, error);
-    for (int d = 0; d < 3 && status == LW_OK; d++) status = make_axis(run->problem, &where, d, &where.axes[d], error);
+    for (int d = 0; d < 3 && status == LW_OK; d++)
+        status = make_axis(run->problem, &where, d, &where.axes[d], error);
     if (status == LW_OK) status = fill_grid(run->problem, &where, error);
-    if (status == LW_OK && !(file = fopen(path, "w"))) status = lw_fail(error, LW_SYSTEM, "%s: %s", path, strerror(errno));
+    if (status == LW_OK && !(file = fopen(path, "w")))
+        status = lw_fail(error, LW_SYSTEM, "%s: %s", path, strerror(errno));
     if (status == LW_OK) {
         fprintf(file, "# vtk DataFile Version 3.0\nleastwise model\nASCII\n");
         write_geometry(file, run->problem, &where);

@@ -27,7 +27,8 @@ lw_status lw_write_parameter_covariance(const lw_run *run, const char *path, lw_
     return lw_csv_finish(writer, error);
 }
 
-lw_status lw_write_resolution_rows(const lw_run *run, const int64_t *of, int64_t count, const char *path, lw_error *error)
+lw_status lw_write_resolution_rows(const lw_run *run, const int64_t *of, int64_t count, const char *path,
+                                   lw_error *error)
 {
     static const char *const head[] = {"parameter", "of_parameter", "resolution", NULL};
     const lw_problem *problem = run->problem;
@@ -47,7 +48,8 @@ lw_status lw_write_resolution_rows(const lw_run *run, const int64_t *of, int64_t
 
 lw_status lw_write_ellipses(const lw_run *run, const char *path, lw_error *error)
 {
-    static const char *const head[] = {"point", "to_point", "semi_major", "semi_minor", "azimuth", "confidence", "multiplier", "vertical", NULL};
+    static const char *const head[] = {"point",      "to_point",   "semi_major", "semi_minor", "azimuth",
+                                       "confidence", "multiplier", "vertical",   NULL};
     const lw_certainty *certainty = run->certainty;
     const lw_ids *points = run->problem->point_names;
     lw_csv_writer *writer;
@@ -71,7 +73,8 @@ lw_status lw_write_ellipses(const lw_run *run, const char *path, lw_error *error
 
 lw_status lw_write_outliers(const lw_run *run, const char *path, lw_error *error)
 {
-    static const char *const head[] = {"step", "observation", "action", "statistic", "critical", "reason", NULL};
+    static const char *const head[] = {"step",     "observation", "action", "statistic",
+                                       "critical", "reason",      NULL};
     lw_csv_writer *writer;
     lw_status status = lw_csv_create(path, &writer, error);
     if (status != LW_OK) return status;

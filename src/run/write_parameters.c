@@ -6,9 +6,12 @@
 #include <math.h>
 
 const char *const lw_reserved_columns[] = {
-    "parameter", "estimate", "sigma_kind", "interval_low", "interval_high", "resolution", "hits", "coverage", "at_bound",
-    "bound_multiplier", "observation", "predicted", "predicted_sigma", "residual", "redundancy", "standardized", "detectable",
-    "bias_ratio", "error_estimate", "largest_shift", "shifted_parameter", "weight", "flag", NULL};
+    "parameter",         "estimate",         "sigma_kind",     "interval_low",
+    "interval_high",     "resolution",       "hits",           "coverage",
+    "at_bound",          "bound_multiplier", "observation",    "predicted",
+    "predicted_sigma",   "residual",         "redundancy",     "standardized",
+    "detectable",        "bias_ratio",       "error_estimate", "largest_shift",
+    "shifted_parameter", "weight",           "flag",           NULL};
 
 static double entry(const double *array, int64_t i)
 {
@@ -18,8 +21,10 @@ static double entry(const double *array, int64_t i)
 static void write_carried(lw_csv_writer *writer, const lw_carried *carried, int64_t row)
 {
     for (int c = 0; c < carried->columns; c++)
-        if (row < carried->rows) lw_csv_text(writer, lw_carried_text(carried, row, c));
-        else lw_csv_empty(writer);
+        if (row < carried->rows)
+            lw_csv_text(writer, lw_carried_text(carried, row, c));
+        else
+            lw_csv_empty(writer);
 }
 
 /* Columns of parameters.csv that the program reads but that a reader of the run wants beside the estimate. */
@@ -36,9 +41,13 @@ static void write_place_head(lw_csv_writer *writer, const lw_problem *problem)
 static void write_place(lw_csv_writer *writer, const lw_problem *problem, int64_t j)
 {
     static const char *const axis[] = {"", "east", "north", "up", "x", "y", "z"};
-    if (problem->point) lw_csv_text(writer, problem->point[j] >= 0 ? lw_ids_name(problem->point_names, problem->point[j]) : "");
+    if (problem->point)
+        lw_csv_text(writer,
+                    problem->point[j] >= 0 ? lw_ids_name(problem->point_names, problem->point[j]) : "");
     if (problem->axis) lw_csv_text(writer, axis[problem->axis[j]]);
-    if (problem->region) lw_csv_text(writer, problem->region[j] >= 0 ? lw_ids_name(problem->region_names, problem->region[j]) : "");
+    if (problem->region)
+        lw_csv_text(writer,
+                    problem->region[j] >= 0 ? lw_ids_name(problem->region_names, problem->region[j]) : "");
     for (int d = 0; d < 3; d++)
         if (problem->coordinate[d]) lw_csv_number(writer, problem->coordinate[d][j]);
 }
@@ -67,14 +76,16 @@ lw_status lw_write_parameters(const lw_run *run, const char *path, lw_error *err
     lw_status status = lw_csv_create(path, &writer, error);
     if (status != LW_OK) return status;
     for (int c = 0; c < 9; c++) {
-        static const char *const head[] = {"parameter", "estimate", "sigma", "sigma_kind", "interval_low",
-                                           "interval_high", "resolution", "hits", "coverage"};
+        static const char *const head[] = {"parameter",  "estimate",     "sigma",
+                                           "sigma_kind", "interval_low", "interval_high",
+                                           "resolution", "hits",         "coverage"};
         lw_csv_text(writer, head[c]);
     }
     lw_csv_text(writer, "at_bound");
     if (run->at_bound && run->bound_multiplier) lw_csv_text(writer, "bound_multiplier");
     write_place_head(writer, problem);
-    for (int c = 0; c < problem->parameter_carried.columns; c++) lw_csv_text(writer, problem->parameter_carried.name[c]);
+    for (int c = 0; c < problem->parameter_carried.columns; c++)
+        lw_csv_text(writer, problem->parameter_carried.name[c]);
     lw_csv_end_row(writer);
     for (int64_t j = 0; j < problem->n; j++) {
         bool fixed = problem->fixed && problem->fixed[j];

@@ -6,7 +6,8 @@
 
 lw_status lw_write_recovery(const lw_run *run, const char *path, lw_error *error)
 {
-    static const char *const head[] = {"pattern", "size", "parameter", "input", "recovered", "amplitude", "correlation"};
+    static const char *const head[] = {"pattern",   "size",      "parameter",  "input",
+                                       "recovered", "amplitude", "correlation"};
     const lw_probe *probe = run->probe;
     lw_csv_writer *writer;
     lw_status status = lw_csv_create(path, &writer, error);
@@ -41,7 +42,8 @@ lw_status lw_write_spread(const lw_run *run, const char *path, lw_error *error)
     for (int64_t j = 0; j < probe->parameters; j++) {
         lw_csv_text(writer, lw_ids_name(run->problem->parameters, j));
         lw_csv_number(writer, probe->spread[j]);
-        lw_csv_number(writer, 1.0 / sqrt(2.0 * probe->trials)); /* of a standard deviation from N normal draws */
+        lw_csv_number(writer,
+                      1.0 / sqrt(2.0 * probe->trials)); /* of a standard deviation from N normal draws */
         lw_csv_end_row(writer);
     }
     return lw_csv_finish(writer, error);

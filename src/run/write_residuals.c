@@ -69,8 +69,10 @@ static void write_certainty(lw_csv_writer *writer, const lw_run *run, int64_t ro
     lw_csv_number(writer, certainty ? entry(certainty->error_estimate, row) : LW_UNKNOWN);
     lw_csv_number(writer, certainty ? entry(certainty->largest_shift, row) : LW_UNKNOWN);
     int64_t shifted = certainty && certainty->shifted_parameter ? certainty->shifted_parameter[row] : -1;
-    if (shifted >= 0) lw_csv_text(writer, lw_ids_name(run->problem->parameters, shifted));
-    else lw_csv_empty(writer);
+    if (shifted >= 0)
+        lw_csv_text(writer, lw_ids_name(run->problem->parameters, shifted));
+    else
+        lw_csv_empty(writer);
     lw_csv_number(writer, weight_of(run, row));
     unsigned flag = certainty && certainty->flag ? certainty->flag[row] : 0;
     if (run->outliers && weight_of(run, row) == 0.0) flag |= LW_FLAG_SET_ASIDE;
@@ -79,9 +81,10 @@ static void write_certainty(lw_csv_writer *writer, const lw_run *run, int64_t ro
 
 lw_status lw_write_residuals(const lw_run *run, const char *path, lw_error *error)
 {
-    static const char *const head[] = {"observation", "value", "sigma", "predicted", "predicted_sigma",
-                                       "residual", "redundancy", "standardized", "detectable", "bias_ratio",
-                                       "error_estimate", "largest_shift", "shifted_parameter", "weight", "flag"};
+    static const char *const head[] = {
+        "observation",       "value",        "sigma",      "predicted",  "predicted_sigma", "residual",
+        "redundancy",        "standardized", "detectable", "bias_ratio", "error_estimate",  "largest_shift",
+        "shifted_parameter", "weight",       "flag"};
     const lw_problem *problem = run->problem;
     const lw_carried *carried = &problem->observation_carried;
     lw_csv_writer *writer;

@@ -12,8 +12,10 @@ static void write_sizes(lw_json *json, const lw_run *run)
     lw_json_integer(json, "observations", run->problem->m);
     lw_json_integer(json, "parameters", run->problem->n);
     lw_json_integer(json, "nonzeros", lw_sparse_nonzeros(run->problem->design));
-    if (run->estimate && run->estimate->rank >= 0) lw_json_integer(json, "rank", run->estimate->rank);
-    else lw_json_null(json, "rank");
+    if (run->estimate && run->estimate->rank >= 0)
+        lw_json_integer(json, "rank", run->estimate->rank);
+    else
+        lw_json_null(json, "rank");
     lw_json_number(json, "degrees_of_freedom", certainty ? certainty->test.degrees_of_freedom : LW_UNKNOWN);
     lw_json_close(json);
 }
@@ -57,8 +59,10 @@ static void write_fit(lw_json *json, const lw_run *run)
     lw_json_number(json, "variance_factor", certainty ? certainty->test.variance_factor : LW_UNKNOWN);
     lw_json_text_value(json, "variance", run->variance_estimated ? "estimated" : "stated");
     lw_json_number(json, "probability", certainty ? certainty->test.probability : LW_UNKNOWN);
-    if (certainty && certainty->test.applies) lw_json_bool(json, "rejected", certainty->test.rejected);
-    else lw_json_null(json, "rejected");
+    if (certainty && certainty->test.applies)
+        lw_json_bool(json, "rejected", certainty->test.rejected);
+    else
+        lw_json_null(json, "rejected");
     lw_json_close(json);
 }
 
@@ -85,8 +89,10 @@ static void write_groups(lw_json *json, const lw_run *run)
     for (int i = 0; certainty && i < certainty->group_count; i++) {
         const lw_group_factor *group = &certainty->groups[i];
         lw_json_object(json, NULL);
-        lw_json_text_value(json, "group", group->group >= 0 ? lw_ids_name(run->problem->group_names, group->group)
-                                          : group->group == -1 ? "weighted priors" : "no group");
+        lw_json_text_value(json, "group",
+                           group->group >= 0    ? lw_ids_name(run->problem->group_names, group->group)
+                           : group->group == -1 ? "weighted priors"
+                                                : "no group");
         lw_json_integer(json, "observations", group->observations);
         lw_json_number(json, "redundancy", group->redundancy);
         lw_json_number(json, "chi_square", group->chi_square);

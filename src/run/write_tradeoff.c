@@ -7,8 +7,9 @@
 
 lw_status lw_write_tradeoff(const lw_run *run, const char *path, lw_error *error)
 {
-    static const char *const head[] = {"damping", "misfit", "size", "chi_square", "effective_parameters",
-                                       "gcv", "risk", "curvature", "error_bound", "converged"};
+    static const char *const head[] = {
+        "damping", "misfit", "size",      "chi_square",  "effective_parameters",
+        "gcv",     "risk",   "curvature", "error_bound", "converged"};
     lw_csv_writer *writer;
     lw_status status = lw_csv_create(path, &writer, error);
     if (status != LW_OK) return status;

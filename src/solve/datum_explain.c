@@ -57,7 +57,8 @@ static lw_status tell_component(const lw_system *system, double lambda, const in
     return lw_fail_also(
         error, LW_UNSOLVABLE,
         "component %lld of %lld (%lld parameters, the first is '%s') has %s%lld defect%s: these parameters "
-        "can move together without changing any observation: %s; damp (--damping), or hold %lld of them (parameters.csv, "
+        "can move together without changing any observation: %s; damp (--damping), or hold %lld of them "
+        "(parameters.csv, "
         "column fixed), %s",
         (long long)c + 1, (long long)count, (long long)p->columns, name_of(system, p->first),
         defect >= LW_DATUM_VECTORS ? "at least " : "", defect, defect == 1 ? "" : "s", moving, defect, cure);

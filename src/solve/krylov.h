@@ -19,8 +19,8 @@
 #include "solve/projected.h"
 #include "solve/standard_form.h"
 
-/** Vectors of one block of the basis: as many as 2 MiB hold, 8 to 256. Larger blocks come in huge pages, which the system clears
- *  anew for each run (measured: a tenth of the time of a sweep of 4900 cells). */
+/** Vectors of one block of the basis: as many as 2 MiB hold, 8 to 256. Larger blocks come in huge pages,
+ * which the system clears anew for each run (measured: a tenth of the time of a sweep of 4900 cells). */
 #define LW_BASIS_LEAST 8
 #define LW_BASIS_MOST 256
 #define LW_BASIS_ROOM 2097152

@@ -49,8 +49,8 @@ lw_status lw_penalty_trial_inverse(const lw_sparse *L, const lw_penalty_graph *g
 lw_status lw_penalty_orthonormal(const lw_penalty_graph *graph, int64_t c, int64_t columns, int q, double *X,
                                  int *rank, lw_error *error);
 
-/** Warns when the data hardly determine the `directions` that the penalty leaves alone: the reciprocal condition of A N (columns of
- *  length 1) is below 1e-5, and parameters run away along them at any damping. */
+/** Warns when the data hardly determine the `directions` that the penalty leaves alone: the reciprocal
+ * condition of A N (columns of length 1) is below 1e-5, and parameters run away along them at any damping. */
 void lw_standard_warn(lw_log *log, int64_t directions, double rcond);
 
 #endif

@@ -14,7 +14,9 @@ static double cost_of(const lw_system *system, double lambda, const lw_engine *e
     int64_t entries = system->matrix ? lw_sparse_nonzeros(system->matrix) : 0;
     if (lambda > 0) entries += system->penalty ? lw_sparse_nonzeros(system->penalty) : system->penalty_rows;
     double solve = (double)(entries + system->rows + system->columns);
-    if (!strcmp(engine->name, "dense")) solve += (double)(system->rows + (lambda > 0 ? system->penalty_rows : 0)) * (double)system->columns; /* both triangles of the QR */
+    if (!strcmp(engine->name, "dense"))
+        solve += (double)(system->rows + (lambda > 0 ? system->penalty_rows : 0)) *
+                 (double)system->columns; /* both triangles of the QR */
     return (double)system->columns * solve;
 }
 

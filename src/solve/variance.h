@@ -9,9 +9,9 @@
 
 /** variance (columns): Q_jj in model units for the stated weights, in double-double. *worst: the largest
  * relative size of a last correction. Does nothing and returns LW_QUALIFIED when the cost, columns x nonzeros
- * of the stacked matrix (dense: x rows x columns), is above `most_cost` (0: 5e7, about a second) or the decomposition does not refine;
- * the caller then takes the entries of inverse_entries and says so. LW_NOT_CONVERGED: refined as far as
- * possible. */
+ * of the stacked matrix (dense: x rows x columns), is above `most_cost` (0: 5e7, about a second) or the
+ * decomposition does not refine; the caller then takes the entries of inverse_entries and says so.
+ * LW_NOT_CONVERGED: refined as far as possible. */
 lw_status lw_solve_variances(lw_decomposition *decomposition, double lambda, double most_cost,
                              const lw_watch *watch, lw_decimal *variance, double *worst, lw_error *error);
 

@@ -1,5 +1,5 @@
-/** What reading one CSV file consists of, shared by csv_read (libcsv), csv_file (chunks and batches) and csv_fault
- *  (places and messages) and by nobody else. */
+/** What reading one CSV file consists of, shared by csv_read (libcsv), csv_file (chunks and batches) and
+ * csv_fault (places and messages) and by nobody else. */
 #ifndef LW_TABLE_CSV_STATE_H
 #define LW_TABLE_CSV_STATE_H
 
@@ -25,10 +25,10 @@ struct lw_csv {
     /* csv_read: the parser, and rows waiting: rows_parsed - rows_taken of them from fields[first_field] on */
     struct csv_parser *parser;
     bool parser_open;
-    bool quoted;      /* does the field that ends next stand in quotes */
-    bool skipping;    /* behind a stray quote, up to the line's end */
-    bool has_nul;     /* the chunk holds a NUL byte */
-    bool row_spoiled; /* spoiled_field of the row begun holds one */
+    bool quoted;                       /* does the field that ends next stand in quotes */
+    bool skipping;                     /* behind a stray quote, up to the line's end */
+    bool has_nul;                      /* the chunk holds a NUL byte */
+    bool row_spoiled;                  /* spoiled_field of the row begun holds one */
     int64_t row_fields, spoiled_field; /* fields of the row begun, also those beyond the header's */
     char *arena;
     size_t arena_used, arena_room;
@@ -42,8 +42,8 @@ struct lw_csv {
     bool at_start, in_comment, after_return, after_line, at_end;
     bool stop; /* nothing behind can be read */
     int64_t line, chunks, mark_step;
-    lw_csv_mark *marks;  /* row: rows_parsed there, -1 before the header */
-    int64_t *marks_all;  /* all_rows there */
+    lw_csv_mark *marks; /* row: rows_parsed there, -1 before the header */
+    int64_t *marks_all; /* all_rows there */
     size_t mark_count;
     /* the header */
     bool header_done;

@@ -1,5 +1,6 @@
-/** Writes CSV: RFC 4180 quoting where a field needs it, '\n' line ends, numbers with the shortest text that reads back
- *  to the same double, NaN as an empty field. Buffered; the first failure is kept and told by lw_csv_finish. */
+/** Writes CSV: RFC 4180 quoting where a field needs it, '\n' line ends, numbers with the shortest text that
+ * reads back to the same double, NaN as an empty field. Buffered; the first failure is kept and told by
+ * lw_csv_finish. */
 #ifndef LW_TABLE_CSV_WRITE_H
 #define LW_TABLE_CSV_WRITE_H
 

@@ -1,4 +1,5 @@
-/** SHA-256 (FIPS 180-4) of files and buffers (libgcrypt), for the report and packs; xxHash64 for id tables. */
+/** SHA-256 (FIPS 180-4) of files and buffers (libgcrypt), for the report and packs; xxHash64 for id tables.
+ */
 #ifndef LW_TABLE_DIGEST_H
 #define LW_TABLE_DIGEST_H
 
@@ -10,7 +11,8 @@
 typedef struct lw_digest lw_digest;
 lw_status lw_digest_new(lw_digest **out, lw_error *error);
 void lw_digest_add(lw_digest *digest, const void *bytes, size_t length);
-/** 64 hexadecimal digits and a NUL of all that was added; the digest can be added to afterwards. "" when memory is out. */
+/** 64 hexadecimal digits and a NUL of all that was added; the digest can be added to afterwards. "" when
+ * memory is out. */
 void lw_digest_hex(lw_digest *digest, char hex[65]);
 void lw_digest_free(lw_digest *digest);
 

@@ -1,5 +1,5 @@
-/** Reads a Matrix Market coordinate file (real, integer or pattern; general or symmetric). Row and column numbers are
- *  the ids. Boisvert, Pozo & Remington, The Matrix Market Exchange Formats, NISTIR 5935, 1996. */
+/** Reads a Matrix Market coordinate file (real, integer or pattern; general or symmetric). Row and column
+ * numbers are the ids. Boisvert, Pozo & Remington, The Matrix Market Exchange Formats, NISTIR 5935, 1996. */
 #ifndef LW_TABLE_MARKET_H
 #define LW_TABLE_MARKET_H
 
@@ -18,7 +18,8 @@ typedef struct lw_market {
     char sha256[65];
 } lw_market;
 
-/** Faults with file:line:column: bad banner, unsupported kind (complex, array), index out of range, wrong count. */
+/** Faults with file:line:column: bad banner, unsupported kind (complex, array), index out of range, wrong
+ * count. */
 lw_status lw_market_read(const char *path, const lw_watch *watch, lw_market *out, lw_error *error);
 void lw_market_clear(lw_market *market);
 

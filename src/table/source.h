@@ -1,5 +1,5 @@
-/** A file being read once from front to back, with its size and SHA-256 taken on the way, and parts of it read again.
- *  What cannot be read again (a pipe) is first copied to memory. */
+/** A file being read once from front to back, with its size and SHA-256 taken on the way, and parts of it
+ * read again. What cannot be read again (a pipe) is first copied to memory. */
 #ifndef LW_TABLE_SOURCE_H
 #define LW_TABLE_SOURCE_H
 

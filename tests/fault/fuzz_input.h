@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The bytes of a fuzz target as a file in memory, and the main that replays files. Included once, by the target. */
+/* The bytes of a fuzz target as a file in memory, and the main that replays files. Included once, by the
+ * target. */
 #ifndef FUZZ_INPUT_H
 #define FUZZ_INPUT_H
 

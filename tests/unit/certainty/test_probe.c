@@ -7,19 +7,22 @@
 #include <math.h>
 #include <string.h>
 
-/* Nine blocks, eight straight rays: three columns, three rows, the main diagonal, one ray through the corner block. Source:
- * textbook example on generalized inverses in inverse theory (geometry from memory); the spike recovered by the generalized
- * inverse and the diagonals of the damped resolution matrix recomputed with 50 digits. */
+/* Nine blocks, eight straight rays: three columns, three rows, the main diagonal, one ray through the corner
+ * block. Source: textbook example on generalized inverses in inverse theory (geometry from memory); the spike
+ * recovered by the generalized inverse and the diagonals of the damped resolution matrix recomputed with 50
+ * digits. */
 static lw_problem *nine_blocks(void)
 {
     const double s = sqrt(2.0);
-    const double A[8 * 9] = {1, 0, 0, 1, 0, 0, 1, 0, 0, 0, 1, 0, 0, 1, 0, 0, 1, 0, 0, 0, 1, 0, 0, 1, 0, 0, 1, 1, 1, 1, 0, 0, 0, 0, 0, 0,
-                             0, 0, 0, 1, 1, 1, 0, 0, 0, 0, 0, 0, 0, 0, 0, 1, 1, 1, s, 0, 0, 0, s, 0, 0, 0, s, 0, 0, 0, 0, 0, 0, 0, 0, s};
+    const double A[8 * 9] = {1, 0, 0, 1, 0, 0, 1, 0, 0, 0, 1, 0, 0, 1, 0, 0, 1, 0, 0, 0, 1, 0, 0, 1,
+                             0, 0, 1, 1, 1, 1, 0, 0, 0, 0, 0, 0, 0, 0, 0, 1, 1, 1, 0, 0, 0, 0, 0, 0,
+                             0, 0, 0, 1, 1, 1, s, 0, 0, 0, s, 0, 0, 0, s, 0, 0, 0, 0, 0, 0, 0, 0, s};
     const double value[8] = {1, 2, 3, 4, 5, 6, 7, 8};
     return problem_from_dense(8, 9, A, value, NULL);
 }
 
-static lw_probe *probe_of(lw_problem *problem, const char *engine, double lambda, const lw_probe_plan *plan, uint64_t seed)
+static lw_probe *probe_of(lw_problem *problem, const char *engine, double lambda, const lw_probe_plan *plan,
+                          uint64_t seed)
 {
     lw_error error = {0};
     lw_system *system;
@@ -30,8 +33,10 @@ static lw_probe *probe_of(lw_problem *problem, const char *engine, double lambda
     lw_solve_options options = {.engine = engine, .tolerance = 1e-12};
     lw_watch watch = {.seed = seed};
     ck_assert_int_eq(lw_system_new(problem, &none, &watch, &system, &error), LW_OK);
-    ck_assert_msg(lw_decompose(system, lambda, &options, &watch, &choice, &decomposition, &error) == LW_OK, "%s", error.text);
-    ck_assert_msg(lw_probe_make(decomposition, lambda, plan, &watch, &probe, &error) == LW_OK, "%s", error.text);
+    ck_assert_msg(lw_decompose(system, lambda, &options, &watch, &choice, &decomposition, &error) == LW_OK,
+                  "%s", error.text);
+    ck_assert_msg(lw_probe_make(decomposition, lambda, plan, &watch, &probe, &error) == LW_OK, "%s",
+                  error.text);
     lw_decomposition_free(decomposition);
     lw_system_free(system);
     return probe;
@@ -45,7 +50,8 @@ START_TEST(a_spike_comes_back_as_the_generalized_inverse_says)
     const double spike[9] = {0, 0, 0, 0, 1, 0, 0, 0, 0};
     lw_problem *problem = nine_blocks();
     lw_probe_plan plan = {.kind = LW_PROBE_GIVEN, .given = spike, .amplitude = 1.0};
-    lw_probe *probe = probe_of(problem, "dense", 1e-6, &plan, 1); /* damping so small that the minimum-norm solution is left */
+    lw_probe *probe = probe_of(problem, "dense", 1e-6, &plan,
+                               1); /* damping so small that the minimum-norm solution is left */
     for (int j = 0; j < 9; j++) ck_assert_double_eq_tol(probe->pattern[0].recovered[j], expected[j], 1e-9);
     lw_probe_free(probe);
     lw_problem_free(problem);
@@ -54,8 +60,9 @@ END_TEST
 
 START_TEST(every_engine_gives_the_damped_resolution)
 {
-    const double diagonal[9] = {0.7640953473771, 0.6645738162766, 0.5941847626058, 0.6645738162766, 0.7640953473771,
-                                0.5941847626058, 0.5941847626058, 0.5941847626058, 0.9146073740501}; /* lambda 0.5 */
+    const double diagonal[9] = {0.7640953473771, 0.6645738162766, 0.5941847626058,
+                                0.6645738162766, 0.7640953473771, 0.5941847626058,
+                                0.5941847626058, 0.5941847626058, 0.9146073740501}; /* lambda 0.5 */
     lw_problem *problem = nine_blocks();
     for (int j = 0; j < 9; j++) {
         double spike[9] = {0};
@@ -73,7 +80,8 @@ END_TEST
 static lw_problem *direct_grid(int n, double sigma)
 {
     int count = n * n;
-    double *A = LW_NEW_ZEROS(double, count * count), *value = LW_NEW_ZEROS(double, count), *s = LW_NEW_ZEROS(double, count);
+    double *A = LW_NEW_ZEROS(double, count *count), *value = LW_NEW_ZEROS(double, count),
+           *s = LW_NEW_ZEROS(double, count);
     double *x = LW_NEW_ZEROS(double, count), *z = LW_NEW_ZEROS(double, count);
     for (int j = 0; j < count; j++) {
         A[j * count + j] = 1.0;
@@ -150,8 +158,9 @@ END_TEST
 
 START_TEST(the_bootstrap_draws_within_groups)
 {
-    /* Two parameters, each the mean of its own group's readings: the bootstrap's spread of a mean of m readings is
-     * sqrt(mean square residual / m) (Efron & Tibshirani 1993, 2.3), and a group of equal readings has none. */
+    /* Two parameters, each the mean of its own group's readings: the bootstrap's spread of a mean of m
+     * readings is sqrt(mean square residual / m) (Efron & Tibshirani 1993, 2.3), and a group of equal
+     * readings has none. */
     enum { EACH = 10 };
     double A[2 * EACH * 2] = {0}, value[2 * EACH];
     int32_t group[2 * EACH];
@@ -165,7 +174,8 @@ START_TEST(the_bootstrap_draws_within_groups)
     lw_problem *problem = problem_from_dense(2 * EACH, 2, A, value, NULL);
     problem_set_group(problem, group, 2);
     const double pattern[2] = {1.0, 1.0};
-    lw_probe_plan plan = {.kind = LW_PROBE_GIVEN, .given = pattern, .amplitude = 1.0, .trials = 800, .bootstrap = true};
+    lw_probe_plan plan = {
+        .kind = LW_PROBE_GIVEN, .given = pattern, .amplitude = 1.0, .trials = 800, .bootstrap = true};
     lw_probe *probe = probe_of(problem, "dense", 0.0, &plan, 3);
     double expected = sqrt(mean_square / EACH);
     ck_assert_double_lt(probe->spread[0], 1e-12);

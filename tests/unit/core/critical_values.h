@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/** Critical values, recomputed in R (12 digits) and checked against SciPy and 30-digit inverse functions; each table says more. */
+/** Critical values, recomputed in R (12 digits) and checked against SciPy and 30-digit inverse functions;
+ * each table says more. */
 #ifndef LW_TESTS_CRITICAL_VALUES_H
 #define LW_TESTS_CRITICAL_VALUES_H
 

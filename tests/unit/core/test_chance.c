@@ -20,7 +20,6 @@ static void close_to(double value, double expected, int line, size_t row)
         ck_abort_msg("line %d, row %zu: %.15g, expected %.12g", line, row, value, expected);
 }
 
-
 START_TEST(chi_square_table)
 {
     static const double p[] = {0.025, 0.05, 0.95, 0.975, 0.99, 0.999};

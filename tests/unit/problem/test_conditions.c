@@ -59,7 +59,8 @@ static const struct {
 } fault[] = {
     {"conditions.csv", CONDITIONS "k,x,1,0\nk,y,1,2\n",
      "conditions.csv:3:7: found '2', expected a blank field, or the value that the condition has already"},
-    {"conditions.csv", CONDITIONS "k,x,1,\n", "conditions.csv:2:7: found an empty field, expected the value of the condition on one of its rows"},
+    {"conditions.csv", CONDITIONS "k,x,1,\n",
+     "conditions.csv:2:7: found an empty field, expected the value of the condition on one of its rows"},
     {"conditions.csv", CONDITIONS "k,w,1,0\n",
      "conditions.csv:2:3: found the id 'w', which is not there, expected a parameter "
      "of the problem"},

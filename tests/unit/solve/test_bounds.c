@@ -74,11 +74,13 @@ START_TEST(integers_with_exact_answers)
 }
 END_TEST
 
-/* (x + 1)^2 + (y - 2)^2 + (x + y - 2)^2, x >= 0: x = 0, y = 2, to the last bit, and so with rows that are weighted. */
+/* (x + 1)^2 + (y - 2)^2 + (x + y - 2)^2, x >= 0: x = 0, y = 2, to the last bit, and so with rows that are
+ * weighted. */
 START_TEST(exact_to_rounding)
 {
     const double A[] = {1, 0, 0, 1, 1, 1}, b[] = {-1, 2, 2}, lower[] = {0, -(double)INFINITY},
-                 upper[] = {(double)INFINITY, (double)INFINITY}, sigma[][3] = {{1, 1, 1}, {0.3, 0.7, 0.7}, {3, 0.1, 0.1}};
+                 upper[] = {(double)INFINITY, (double)INFINITY},
+                 sigma[][3] = {{1, 1, 1}, {0.3, 0.7, 0.7}, {3, 0.1, 0.1}};
     for (int k = 0; k < 3; k++) {
         double x[2];
         lw_problem *problem = problem_from_dense(3, 2, A, b, sigma[k]);
