@@ -134,8 +134,6 @@ static const writing files[] = {{"parameters.csv", has_estimate, write_parameter
                                 {"model.vtk", has_vtk, write_vtk},
                                 {"report.html", always, write_report}};
 
-#define FILES (sizeof files / sizeof *files)
-
 static void print_verdict(const lw_work *work)
 {
     lw_verdict verdict;
@@ -159,9 +157,10 @@ lw_status lw_work_write(lw_work *work, lw_error *error)
     lw_status status = lw_run_measure(run, error);
     if (status == LW_OK) status = lw_folder_begin(work->out, work->arguments->overwrite, &folder, error);
     if (status != LW_OK) return status;
-    for (size_t k = 0; k < FILES && status == LW_OK; k++) {
+    const size_t count = sizeof files / sizeof *files;
+    for (size_t k = 0; k < count && status == LW_OK; k++) {
         if (!files[k].wanted(work)) continue;
-        lw_watch_tick(&work->watch, "writing", (double)k, (double)FILES, files[k].name);
+        lw_watch_tick(&work->watch, "writing", (double)k, (double)count, files[k].name);
         const char *path = lw_folder_file(folder, files[k].name);
         status = path ? files[k].write(work, path, error) : lw_fail_memory(error, "a path", 1);
     }

@@ -62,7 +62,7 @@ static lw_status make_models(lw_krylov *self, int count, const double *lambda, c
         return LW_OK;
     }
     for (int c = 0; c < count && status >= 0 && status != LW_INTERRUPTED; c++) {
-        lw_iterate_result result;
+        lw_iterate_result result = {0};
         status = iterate(self, lambda[c], false, 0, watch, w + c * self->op->columns, &result, error);
     }
     return status == LW_NOT_CONVERGED ? LW_OK : status;
@@ -287,7 +287,7 @@ lw_status lw_krylov_estimate(lw_decomposition *base, double lambda, const lw_wat
     watch = watch_of(self, watch);
     size_t width = (size_t)self->op->columns, columns = (size_t)base->system->columns;
     double *w = lw_alloc_zero(width, sizeof(double)), *z = lw_alloc(columns, sizeof(double));
-    lw_iterate_result result;
+    lw_iterate_result result = {0};
     lw_point trace = {.effective_parameters = (double)NAN, .effective_spread = (double)NAN};
     lw_status status = LW_OK, after = LW_OK;
     if (w == NULL || z == NULL)

@@ -167,7 +167,7 @@ lw_status lw_krylov_stacked_top(lw_krylov *self, const lw_watch *watch, double *
     lambda = sqrt((double)system->columns / square); /* the columns of A have about unit length */
     lw_status status = LW_OK;
     for (int tries = 0, was = 0; tries < TRIES && status == LW_OK; tries++) {
-        lw_point point;
+        lw_point point = {0};
         status = lw_krylov_evaluate_stacked(self, 1, &lambda, 0, &point, NULL, watch, error);
         if (status != LW_OK) break;
         slope = point.size > 0.0 ? 0.5 * point.size_slope * lambda / (point.size * point.size) : 0.0;

@@ -41,7 +41,10 @@ static int copy_pipe(lw_source *source)
     if (buffer == NULL || copy < 0) goto done;
     ssize_t got;
     while ((got = read_some(source->fd, buffer, COPY_ROOM)) > 0)
-        if (write_all(copy, buffer, (size_t)got) != 0) got = -2;
+        if (write_all(copy, buffer, (size_t)got) != 0) {
+            got = -1;
+            break;
+        }
     saved = errno;
     if (got < 0 || lseek(copy, 0, SEEK_SET) != 0) goto done;
     close(source->fd);
