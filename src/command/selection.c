@@ -8,8 +8,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-static lw_status add(const lw_work *work, int64_t **list, int64_t *count, int64_t *room, int64_t j,
-                     lw_error *error)
+static lw_status add(int64_t **list, int64_t *count, int64_t *room, int64_t j, lw_error *error)
 {
     if (*count == *room) {
         int64_t more = *room ? 2 * *room : 64;
@@ -20,7 +19,6 @@ static lw_status add(const lw_work *work, int64_t **list, int64_t *count, int64_
     }
     for (int64_t k = 0; k < *count && *count < 1000; k++)
         if ((*list)[k] == j) return LW_OK;
-    (void)work;
     (*list)[(*count)++] = j;
     return LW_OK;
 }
@@ -48,7 +46,7 @@ static lw_status read_list_file(const lw_work *work, const char *path, int64_t *
                 lw_fail_also(error, LW_BAD_INPUT, "%s:%lld:1: found '%.*s', expected the id of a parameter",
                              path, (long long)number, (int)(length > 40 ? 40 : length), line);
         else
-            status = add(work, list, count, &list_room, j, error);
+            status = add(list, count, &list_room, j, error);
     }
     free(line);
     fclose(file);
@@ -68,7 +66,7 @@ static lw_status read_list_text(const lw_work *work, const char *text, int64_t *
                            "--resolution-of: found '%.*s', expected the id of a parameter",
                            (int)(length > 40 ? 40 : length), part);
         }
-        lw_status status = add(work, list, count, &room, j, error);
+        lw_status status = add(list, count, &room, j, error);
         if (status != LW_OK) return status;
         part = comma ? comma + 1 : NULL;
     }
